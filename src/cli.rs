@@ -1,0 +1,1 @@
+//! Options and help texts.

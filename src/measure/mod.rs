@@ -1,0 +1,3 @@
+//! Figures with their conditions: bias, harmonics and THD.
+
+pub mod report;

@@ -1,0 +1,1 @@
+//! Audio through an engine.
