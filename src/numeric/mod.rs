@@ -1,1 +1,10 @@
-//! To come.
+//! Small dense algebra over a lane type, and the lane type itself.
+
+mod lane;
+mod lu;
+mod matrix;
+pub mod roots;
+
+pub use lane::Lane;
+pub use lu::{Factored, SingularMatrix};
+pub use matrix::Matrix;
