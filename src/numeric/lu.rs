@@ -59,7 +59,8 @@ impl<L: Lane> Factored<L> {
                 let factor = self.factors[(row, column)] * reciprocal;
                 self.factors[(row, column)] = factor;
                 let (above, below) = self.factors.row_and_row_mut(column, row);
-                for (value, subtrahend) in below[column + 1..].iter_mut().zip(&above[column + 1..]) {
+                for (value, subtrahend) in below[column + 1..].iter_mut().zip(&above[column + 1..])
+                {
                     *value -= factor * *subtrahend;
                 }
             }
@@ -130,7 +131,8 @@ mod tests {
         let mut matrix = Matrix::zero(size, size);
         for r in 0..size {
             for c in 0..size {
-                matrix[(r, c)] = 1.0 / (1.0 + r as f64 + 2.0 * c as f64) + if r == (c + 1) % size { 1.0 } else { 0.0 };
+                matrix[(r, c)] = 1.0 / (1.0 + r as f64 + 2.0 * c as f64)
+                    + if r == (c + 1) % size { 1.0 } else { 0.0 };
             }
         }
         matrix
@@ -146,7 +148,10 @@ mod tests {
             Factored::of(&matrix).unwrap().solve(&mut x);
             for (found, wanted) in x.iter().zip(&wanted) {
                 // rounding times the condition number of these matrices, which stays below 1e4
-                assert!((found - wanted).abs() < 1e-11, "{size}: {found} against {wanted}");
+                assert!(
+                    (found - wanted).abs() < 1e-11,
+                    "{size}: {found} against {wanted}"
+                );
             }
         }
     }
@@ -156,6 +161,9 @@ mod tests {
         let mut matrix = Matrix::<f64>::zero(2, 2);
         matrix[(0, 0)] = 1.0;
         matrix[(1, 0)] = 2.0;
-        assert_eq!(Factored::of(&matrix).unwrap_err(), SingularMatrix { column: 1 });
+        assert_eq!(
+            Factored::of(&matrix).unwrap_err(),
+            SingularMatrix { column: 1 }
+        );
     }
 }

@@ -65,7 +65,10 @@ impl<L: Lane> Matrix<L> {
             (&low[read * width..(read + 1) * width], &mut high[..width])
         } else {
             let (low, high) = self.entries.split_at_mut(read * width);
-            (&high[..width], &mut low[change * width..(change + 1) * width])
+            (
+                &high[..width],
+                &mut low[change * width..(change + 1) * width],
+            )
         }
     }
 
@@ -73,7 +76,8 @@ impl<L: Lane> Matrix<L> {
     pub fn swap_rows(&mut self, a: usize, b: usize) {
         if a != b {
             for k in 0..self.columns {
-                self.entries.swap(a * self.columns + k, b * self.columns + k);
+                self.entries
+                    .swap(a * self.columns + k, b * self.columns + k);
             }
         }
     }

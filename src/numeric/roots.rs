@@ -2,7 +2,12 @@
 
 /// The root of `f` between `low` and `high`, where its sign must change, by bisection until the bracket is narrower
 /// than `relative` times its larger end, or as narrow as `f64` allows. `None` where the sign does not change.
-pub fn bisect(mut low: f64, mut high: f64, relative: f64, mut f: impl FnMut(f64) -> f64) -> Option<f64> {
+pub fn bisect(
+    mut low: f64,
+    mut high: f64,
+    relative: f64,
+    mut f: impl FnMut(f64) -> f64,
+) -> Option<f64> {
     let at_low = f(low);
     let at_high = f(high);
     if at_low == 0.0 {

@@ -1,0 +1,280 @@
+//! The two building blocks of a junction: its exponential current and its depletion charge.
+//!
+//! ```text
+//! current:    s·(exp(v/w) − 1)                     w = n·VT
+//! depletion:  v ≤ φ/2 : C·φ/(1−m)·(1 − (1 − v/φ)^(1−m))
+//!             v > φ/2 : Q(φ/2) + C·2^m·(x + m·x²/φ),  x = v − φ/2
+//! ```
+//! Both are returned as differences from an anchor voltage v0, formed without cancellation:
+//! `exp(v/w) − exp(v0/w) = exp(v0/w)·expm1((v − v0)/w)` and likewise for the power of the depletion law.
+
+use crate::numeric::Lane;
+
+/// An exponential of slope 1/`width`: `scale·exp(v/width)`.
+#[derive(Clone, Copy, Debug)]
+pub struct Exponential<L> {
+    /// Scale current, A.
+    pub scale: L,
+    /// 1/(n·VT), 1/V.
+    pub inverse_width: L,
+}
+
+/// An exponential at its anchor.
+#[derive(Clone, Copy, Debug)]
+pub struct ExponentialAnchor<L> {
+    /// Exponent at the anchor.
+    exponent: L,
+    /// `scale·exp(exponent)`, A.
+    value: L,
+    /// Far in reverse, where the anchor's own value is nothing beside any current that matters.
+    deep: bool,
+}
+
+impl<L: Lane> ExponentialAnchor<L> {
+    /// The exponential's value at the anchor, A.
+    pub fn value(&self) -> L {
+        self.value
+    }
+}
+
+/// Below this exponent the anchor's value (1e-13 of the scale current) no longer needs a relative difference, and the
+/// product `exp(v0)·expm1(v − v0)` could meet zero times infinity.
+const DEEP: f64 = -30.0;
+
+impl<L: Lane> Exponential<L> {
+    /// The anchor at `v` volts.
+    pub fn anchor(&self, v: L) -> ExponentialAnchor<L> {
+        let exponent = v * self.inverse_width;
+        ExponentialAnchor {
+            exponent,
+            value: self.scale * exponent.exp(),
+            deep: exponent.largest() < DEEP,
+        }
+    }
+
+    /// Difference from the anchor's value, and slope in A/V, at `delta` volts from the anchor.
+    #[inline(always)]
+    pub fn deviation(&self, anchor: &ExponentialAnchor<L>, delta: L) -> (L, L) {
+        let step = delta * self.inverse_width;
+        let difference = if anchor.deep {
+            self.scale * (anchor.exponent + step).exp() - anchor.value
+        } else {
+            anchor.value * step.exp_m1()
+        };
+        (difference, (anchor.value + difference) * self.inverse_width)
+    }
+}
+
+/// The depletion charge of a junction.
+#[derive(Clone, Copy, Debug)]
+pub struct Depletion<L> {
+    /// Capacitance at zero bias, F.
+    capacitance: L,
+    /// Junction potential φ, V.
+    potential: L,
+    /// Grading exponent m, below 1.
+    grading: L,
+    /// C·2^m, the slope at the joint, F.
+    steep: L,
+    /// Q(φ/2), C.
+    joint: L,
+}
+
+/// A depletion charge at its anchor.
+#[derive(Clone, Copy, Debug)]
+pub struct DepletionAnchor<L> {
+    /// Anchor voltage, V.
+    voltage: L,
+    /// Charge at the anchor, C.
+    charge: L,
+    /// 1 − v0/φ.
+    base: L,
+    /// (1 − v0/φ)^(1−m); 1 where the anchor lies beyond the joint.
+    power: L,
+}
+
+impl<L: Lane> DepletionAnchor<L> {
+    /// The charge at the anchor, C.
+    pub fn charge(&self) -> L {
+        self.charge
+    }
+}
+
+impl<L: Lane> Depletion<L> {
+    /// The law for a capacitance in F, a potential in V and a grading exponent in [0, 1).
+    pub fn new(capacitance: L, potential: L, grading: L) -> Self {
+        let steep = capacitance * (grading * L::splat(std::f64::consts::LN_2)).exp();
+        let rest = L::one() - grading;
+        let half_power = (rest * L::splat(-std::f64::consts::LN_2)).exp();
+        Depletion {
+            capacitance,
+            potential,
+            grading,
+            steep,
+            joint: capacitance * potential / rest * (L::one() - half_power),
+        }
+    }
+
+    /// Whether there is any charge at all.
+    pub fn is_present(&self) -> bool {
+        self.capacitance.largest() > 0.0
+    }
+
+    /// The anchor at `v` volts.
+    pub fn anchor(&self, v: L) -> DepletionAnchor<L> {
+        let half = self.half();
+        let low = v.min(half);
+        let base = L::one() - low / self.potential;
+        let power = ((L::one() - self.grading) * base.ln()).exp();
+        let below = self.scale() * (L::one() - power);
+        let charge = L::choose(
+            half.below(v),
+            || self.joint + self.beyond(v - half),
+            || below,
+        );
+        DepletionAnchor {
+            voltage: v,
+            charge,
+            base,
+            power,
+        }
+    }
+
+    /// Charge difference from the anchor in C, and capacitance in F, at `delta` volts from the anchor.
+    #[inline(always)]
+    pub fn deviation(&self, anchor: &DepletionAnchor<L>, delta: L) -> (L, L) {
+        let v = anchor.voltage + delta;
+        let half = self.half();
+        let beyond = half.below(v);
+        let anchored_beyond = half.below(anchor.voltage);
+        let charge = L::choose(
+            beyond,
+            || {
+                L::choose(
+                    anchored_beyond,
+                    || self.beyond_difference(anchor, delta),
+                    || self.joint - anchor.charge + self.beyond(v - half),
+                )
+            },
+            || {
+                L::choose(
+                    anchored_beyond,
+                    || self.scale() * (L::one() - self.power_at(v)) - anchor.charge,
+                    || self.below_difference(anchor, delta),
+                )
+            },
+        );
+        let capacitance = L::choose(
+            beyond,
+            || {
+                let x = v - half;
+                self.steep * (L::one() + L::splat(2.0) * self.grading * x / self.potential)
+            },
+            || {
+                // C·(1 − v/φ)^(−m) = C·power/base, with the power recovered from the charge just found
+                let power = L::one() - (anchor.charge + charge) / self.scale();
+                self.capacitance * power / (L::one() - v / self.potential)
+            },
+        );
+        (charge, capacitance)
+    }
+
+    #[inline(always)]
+    fn half(&self) -> L {
+        self.potential * L::splat(0.5)
+    }
+
+    #[inline(always)]
+    fn scale(&self) -> L {
+        self.capacitance * self.potential / (L::one() - self.grading)
+    }
+
+    #[inline(always)]
+    fn power_at(&self, v: L) -> L {
+        ((L::one() - self.grading) * (L::one() - v / self.potential).ln()).exp()
+    }
+
+    #[inline(always)]
+    fn beyond(&self, x: L) -> L {
+        self.steep * x * (L::one() + self.grading * x / self.potential)
+    }
+
+    #[inline(always)]
+    fn beyond_difference(&self, anchor: &DepletionAnchor<L>, delta: L) -> L {
+        let x0 = anchor.voltage - self.half();
+        self.steep * delta * (L::one() + self.grading * (x0 + x0 + delta) / self.potential)
+    }
+
+    #[inline(always)]
+    fn below_difference(&self, anchor: &DepletionAnchor<L>, delta: L) -> L {
+        let logarithm = (-delta / (self.potential * anchor.base)).ln_1p();
+        -self.scale() * anchor.power * ((L::one() - self.grading) * logarithm).exp_m1()
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// The formulas of the module head, written out plainly.
+    fn plain_charge(c: f64, phi: f64, m: f64, v: f64) -> f64 {
+        if v <= phi / 2.0 {
+            c * phi / (1.0 - m) * (1.0 - (1.0 - v / phi).powf(1.0 - m))
+        } else {
+            let x = v - phi / 2.0;
+            plain_charge(c, phi, m, phi / 2.0) + c * 2f64.powf(m) * (x + m * x * x / phi)
+        }
+    }
+
+    #[test]
+    fn the_depletion_charge_is_the_plain_formula_from_any_anchor() {
+        let law = Depletion::new(9e-12, 0.72, 0.35);
+        for anchor in [-15.0, -0.3, 0.2, 0.35, 0.37, 0.68] {
+            let at = law.anchor(anchor);
+            for v in [-20.0, -3.0, -0.1, 0.0, 0.3, 0.36, 0.40, 0.7, 0.9] {
+                let (charge, _) = law.deviation(&at, v - anchor);
+                let wanted =
+                    plain_charge(9e-12, 0.72, 0.35, v) - plain_charge(9e-12, 0.72, 0.35, anchor);
+                // a few roundings of charges up to 1e-10 C
+                assert!(
+                    (charge - wanted).abs() < 1e-25,
+                    "{anchor} to {v}: {charge} against {wanted}"
+                );
+            }
+        }
+    }
+
+    #[test]
+    fn a_tiny_step_keeps_its_relative_accuracy() {
+        let law = Depletion::new(9e-12, 0.72, 0.35);
+        for anchor in [-15.0, 0.2, 0.68] {
+            let at = law.anchor(anchor);
+            let (charge, capacitance) = law.deviation(&at, 1e-12);
+            // the next term of the series is 1e-12 of the first
+            assert!(
+                (charge / (capacitance * 1e-12) - 1.0).abs() < 1e-11,
+                "{anchor}"
+            );
+        }
+        let law = Exponential {
+            scale: 1e-14,
+            inverse_width: 1.0 / 0.0257,
+        };
+        let at = law.anchor(0.65);
+        let (difference, slope) = law.deviation(&at, 1e-12);
+        assert!((difference / (slope * 1e-12) - 1.0).abs() < 1e-9);
+    }
+
+    #[test]
+    fn a_deep_anchor_still_reaches_forward_current() {
+        let law = Exponential {
+            scale: 1e-14,
+            inverse_width: 1.0 / 0.025,
+        };
+        let at = law.anchor(-30.0);
+        let (difference, _) = law.deviation(&at, 30.6);
+        // exp(24)·1e-14; the exponent carries the rounding of 1200 and more
+        assert!((difference / (1e-14 * 24f64.exp()) - 1.0).abs() < 1e-12);
+        assert_eq!(law.deviation(&at, 0.0).0, 0.0);
+    }
+}
