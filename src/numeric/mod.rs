@@ -1,5 +1,6 @@
 //! Small dense algebra over a lane type, and the lane type itself.
 
+pub mod fourier;
 mod lane;
 mod lu;
 mod matrix;

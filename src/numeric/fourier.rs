@@ -1,0 +1,191 @@
+//! Fourier coefficients of samples at uneven phases.
+//!
+//! With weights that integrate smooth functions over the period, `2·Σ w·y·cos nθ` is nearly the coefficient of cos nθ.
+//! What it leaves over is read again (iterative refinement of the weighted least-squares fit), the fundamental first,
+//! so that the error of a small harmonic is relative to the distortion and not to the fundamental.
+
+/// Sample points over one period with quadrature weights that sum to one.
+#[derive(Clone, Debug, Default)]
+pub struct UnevenPeriod {
+    cosine: Vec<f64>,
+    sine: Vec<f64>,
+    weights: Vec<f64>,
+}
+
+/// One harmonic as `cosine·cos nθ + sine·sin nθ`, peak values.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct Coefficient {
+    /// Coefficient of cos nθ.
+    pub cosine: f64,
+    /// Coefficient of sin nθ.
+    pub sine: f64,
+}
+
+impl Coefficient {
+    /// Peak amplitude.
+    pub fn peak(&self) -> f64 {
+        self.cosine.hypot(self.sine)
+    }
+
+    /// φ in √2·H·sin(nθ + φ), degrees in (−180, 180].
+    pub fn phase_deg(&self) -> f64 {
+        let degrees = self.cosine.atan2(self.sine).to_degrees();
+        if degrees <= -180.0 {
+            degrees + 360.0
+        } else {
+            degrees
+        }
+    }
+
+    /// Peak of the difference from another coefficient.
+    pub fn distance(&self, other: &Coefficient) -> f64 {
+        (self.cosine - other.cosine).hypot(self.sine - other.sine)
+    }
+}
+
+/// The spectrum of one period and what it leaves over.
+#[derive(Clone, Debug)]
+pub struct Spectrum {
+    /// Mean.
+    pub mean: f64,
+    /// Harmonics 1, 2, ….
+    pub harmonics: Vec<Coefficient>,
+    /// Samples minus mean and harmonics.
+    pub residual: Vec<f64>,
+    /// Mean square of the residual.
+    pub residual_power: f64,
+}
+
+impl UnevenPeriod {
+    /// Points at `phases` in [0, 1] of the period.
+    pub fn new(phases: &[f64], weights: Vec<f64>) -> Self {
+        let angle = |phase: &f64| std::f64::consts::TAU * phase;
+        UnevenPeriod {
+            cosine: phases.iter().map(|phase| angle(phase).cos()).collect(),
+            sine: phases.iter().map(|phase| angle(phase).sin()).collect(),
+            weights,
+        }
+    }
+
+    /// Mean and harmonics 1…`count` of `values`.
+    pub fn spectrum(&self, values: &[f64], count: usize) -> Spectrum {
+        let mut spectrum = Spectrum {
+            mean: 0.0,
+            harmonics: vec![Coefficient::default(); count],
+            residual: values.to_vec(),
+            residual_power: 0.0,
+        };
+        for orders in [1, 1, count, count] {
+            self.refine(&mut spectrum, orders.min(count));
+        }
+        spectrum.residual_power = self
+            .weights
+            .iter()
+            .zip(&spectrum.residual)
+            .map(|(w, r)| w * r * r)
+            .sum();
+        spectrum
+    }
+
+    /// More harmonics of what a spectrum leaves over, `from`…`to`, taken out of its residual.
+    pub fn extend(&self, spectrum: &mut Spectrum, to: usize) {
+        spectrum
+            .harmonics
+            .resize(to.max(spectrum.harmonics.len()), Coefficient::default());
+        self.refine(spectrum, to);
+        self.refine(spectrum, to);
+        spectrum.residual_power = self
+            .weights
+            .iter()
+            .zip(&spectrum.residual)
+            .map(|(w, r)| w * r * r)
+            .sum();
+    }
+
+    /// Read mean and harmonics 1…`orders` of the residual and move them from it into the coefficients.
+    fn refine(&self, spectrum: &mut Spectrum, orders: usize) {
+        let residual = &mut spectrum.residual;
+        let weighted: Vec<f64> = self
+            .weights
+            .iter()
+            .zip(residual.iter())
+            .map(|(w, r)| w * r)
+            .collect();
+        let mean: f64 = weighted.iter().sum();
+        spectrum.mean += mean;
+        for value in residual.iter_mut() {
+            *value -= mean;
+        }
+        let mut turning = (self.cosine.clone(), self.sine.clone());
+        for coefficient in spectrum.harmonics.iter_mut().take(orders) {
+            let (cosine, sine) = (
+                2.0 * dot(&weighted, &turning.0),
+                2.0 * dot(&weighted, &turning.1),
+            );
+            coefficient.cosine += cosine;
+            coefficient.sine += sine;
+            for ((value, c), s) in residual.iter_mut().zip(&turning.0).zip(&turning.1) {
+                *value -= cosine * c + sine * s;
+            }
+            self.turn(&mut turning);
+        }
+    }
+
+    /// From nθ to (n + 1)θ at every point.
+    fn turn(&self, (cosine, sine): &mut (Vec<f64>, Vec<f64>)) {
+        for (((c, s), c1), s1) in cosine
+            .iter_mut()
+            .zip(sine.iter_mut())
+            .zip(&self.cosine)
+            .zip(&self.sine)
+        {
+            (*c, *s) = (*c * c1 - *s * s1, *s * c1 + *c * s1);
+        }
+    }
+}
+
+/// Inner product with four running sums, which the compiler can keep in one vector register.
+fn dot(a: &[f64], b: &[f64]) -> f64 {
+    let mut sums = [0.0; 4];
+    let chunks = a.chunks_exact(4).zip(b.chunks_exact(4));
+    for (a, b) in chunks {
+        for k in 0..4 {
+            sums[k] += a[k] * b[k];
+        }
+    }
+    let done = a.len() - a.len() % 4;
+    let rest: f64 = a[done..].iter().zip(&b[done..]).map(|(a, b)| a * b).sum();
+    (sums[0] + sums[1]) + (sums[2] + sums[3]) + rest
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn harmonics_on_uneven_points_are_found_to_rounding() {
+        // two halves of the period with different steps; mid-point weights
+        let mut phases = Vec::new();
+        let mut weights = Vec::new();
+        for (start, count) in [(0.0, 300), (0.5, 500)] {
+            for k in 0..count {
+                phases.push(start + 0.5 * (k as f64 + 0.5) / count as f64);
+                weights.push(0.5 / count as f64);
+            }
+        }
+        let points = UnevenPeriod::new(&phases, weights);
+        let value = |phase: &f64| {
+            let angle = std::f64::consts::TAU * phase;
+            0.25 + (angle + 0.3).sin() + 1e-6 * (2.0 * angle).cos() + 1e-9 * (7.0 * angle).sin()
+        };
+        let values: Vec<f64> = phases.iter().map(value).collect();
+        let spectrum = points.spectrum(&values, 20);
+        // refinement leaves rounding of the samples only
+        assert!((spectrum.mean - 0.25).abs() < 1e-14);
+        assert!((spectrum.harmonics[0].peak() - 1.0).abs() < 1e-14);
+        assert!((spectrum.harmonics[0].phase_deg() - 0.3f64.to_degrees()).abs() < 1e-12);
+        assert!((spectrum.harmonics[1].cosine - 1e-6).abs() < 1e-15);
+        assert!((spectrum.harmonics[6].sine - 1e-9).abs() < 1e-15);
+        assert!(spectrum.residual_power < 1e-30);
+    }
+}
