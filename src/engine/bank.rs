@@ -138,6 +138,12 @@ impl<L: Lane> PortBank<L> {
         self.stores_charge
     }
 
+    /// The same ports with every charge left out.
+    pub fn without_charge(mut self) -> Self {
+        self.stores_charge = false;
+        self
+    }
+
     /// Anchor voltages, V.
     pub fn anchor(&self) -> &[L] {
         &self.anchor

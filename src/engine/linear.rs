@@ -146,13 +146,31 @@ impl<'a> Linearised<'a> {
     /// The impedance seen by a current forced into `node` at `frequency` in Hz, every drive at rest. `None` where
     /// singular, or where the node's voltage is fixed.
     pub fn impedance(&self, node: usize, frequency: f64) -> Option<Complex64> {
-        let probe = self.assembly.probe(self.network, node, 0);
+        self.impedance_between(node, 0, frequency)
+    }
+
+    /// The impedance between two nodes at `frequency` in Hz, every drive at rest. `None` where singular, or where both
+    /// voltages are fixed.
+    pub fn impedance_between(
+        &self,
+        plus: usize,
+        minus: usize,
+        frequency: f64,
+    ) -> Option<Complex64> {
+        let probe = self.assembly.probe(self.network, plus, minus);
         if probe.unknowns.iter().all(|value| *value == 0.0) {
             return None;
         }
         let right = probe.unknowns.map(|value| Complex64::new(value, 0.0));
         let solution = self.solve_for(frequency, right)?;
-        Some(read_probe(&probe, &solution, EMF))
+        Some(
+            probe
+                .unknowns
+                .iter()
+                .zip(solution.iter())
+                .map(|(c, x)| *x * *c)
+                .sum(),
+        )
     }
 
     /// Port voltages and the rates of the states that a unit complex EMF at `frequency` brings: (ports, linear states,

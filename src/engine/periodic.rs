@@ -117,6 +117,43 @@ pub struct PeriodicSolution {
     pub beyond_early_range: bool,
 }
 
+impl PeriodicSolution {
+    /// rms of the output's deviation from bias, V.
+    pub fn rms(&self) -> f64 {
+        self.weights
+            .iter()
+            .zip(&self.outputs)
+            .map(|(w, y)| w * y * y)
+            .sum::<f64>()
+            .sqrt()
+    }
+
+    /// The output on `size` even points of the period from phase zero, V, by the collocation polynomials.
+    pub fn even_grid(&self, size: usize) -> Vec<f64> {
+        let radau = Radau::new(self.stages);
+        let mut grid = Vec::with_capacity(size);
+        let mut element = 0;
+        for k in 0..size {
+            let phase = k as f64 / size as f64;
+            while element + 1 < self.elements.len() && self.elements[element + 1].0 <= phase {
+                element += 1;
+            }
+            let (start, length) = self.elements[element];
+            let first = element * self.stages;
+            let before = if first == 0 {
+                self.outputs.len() - 1
+            } else {
+                first - 1
+            };
+            let values = std::iter::once(&self.outputs[before])
+                .chain(&self.outputs[first..first + self.stages]);
+            let weights = radau.reading((phase - start) / length);
+            grid.push(weights.iter().zip(values).map(|(w, y)| w * y).sum());
+        }
+        grid
+    }
+}
+
 /// The periodic drive: EMF of unit amplitude against phase in [0, 1].
 pub type UnitDrive<'a> = &'a (dyn Fn(f64) -> f64 + Sync);
 

@@ -104,6 +104,10 @@ pub struct StaticSwing {
     pub up: Option<f64>,
     /// Downward from the bias, V (positive number); `None` where nothing limits it.
     pub down: Option<f64>,
+    /// EMF at the end of the upward swing, V.
+    pub up_emf: Option<f64>,
+    /// EMF at the end of the downward swing, V.
+    pub down_emf: Option<f64>,
     /// Part that limits the upward swing and its region there.
     pub up_limited_by: Option<(String, Region)>,
     /// Part that limits the downward swing and its region there.
@@ -186,6 +190,8 @@ pub struct DistortionPoint {
     pub harmonics: Vec<Harmonic>,
     /// Largest change of H1…H20 relative to H1 when every time element is bisected: the solution's own error estimate.
     pub error_estimate: f64,
+    /// Whether some transistor left the straight line of its Early voltages on the way.
+    pub beyond_early_range: bool,
     /// One period of the output's deviation from bias on a uniform grid, V (for the plots).
     pub waveform: Vec<f64>,
 }
