@@ -207,6 +207,7 @@ fn describe(
         dc_shift: mean,
         harmonics,
         error_estimate: solution.error_estimate,
+        samples: solution.phases.len(),
         beyond_early_range: solution.beyond_early_range,
         waveform: solution.even_grid(WAVEFORM_POINTS),
     }

@@ -190,6 +190,8 @@ pub struct DistortionPoint {
     pub harmonics: Vec<Harmonic>,
     /// Largest change of H1…H20 relative to H1 when every time element is bisected: the solution's own error estimate.
     pub error_estimate: f64,
+    /// Points in time the steady state was solved at.
+    pub samples: usize,
     /// Whether some transistor left the straight line of its Early voltages on the way.
     pub beyond_early_range: bool,
     /// One period of the output's deviation from bias on a uniform grid, V (for the plots).
