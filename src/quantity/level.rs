@@ -159,10 +159,16 @@ mod tests {
 
     #[test]
     fn the_five_spellings_of_the_manual_are_one_level() {
-        // Typed to three figures, so they agree to half a unit of the third: 0.25 %.
-        for text in ["28.3mVpk", "56.6mVpp", "-34dBV", "-31.8dBu"] {
+        // Half a unit of the last digit typed: 0.05 of 28.3 or 56.6, and 0.05 dB.
+        let half_of_tenth_db = 10f64.powf(0.05 / 20.0) - 1.0;
+        for (text, bound) in [
+            ("28.3mVpk", 0.05 / 28.3),
+            ("56.6mVpp", 0.05 / 56.6),
+            ("-34dBV", half_of_tenth_db),
+            ("-31.8dBu", half_of_tenth_db),
+        ] {
             let error = rms(text) / 0.02 - 1.0;
-            assert!(error.abs() < 0.0025, "{text} is off by {error}");
+            assert!(error.abs() < bound, "{text} is off by {error}");
         }
     }
 
