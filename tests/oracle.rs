@@ -1,9 +1,9 @@
 //! The program against the open reference values in `tests/expected/open` (its README says how they were computed):
 //! every stage, every level.
 
-use cleanswing::engine::linear::Linearised;
 use cleanswing::engine::OperatingPoint;
-use cleanswing::measure::distortion::{distortion, DistortionRequest};
+use cleanswing::engine::linear::Linearised;
+use cleanswing::measure::distortion::{DistortionRequest, distortion};
 use cleanswing::measure::report::DistortionPoint;
 use cleanswing::network::Network;
 use cleanswing::stage::Stage;
@@ -30,16 +30,24 @@ fn folder() -> PathBuf {
 }
 
 fn stage(name: &str) -> Stage {
-    Stage::read(&folder().join(format!("{name}.toml"))).expect("the open stages are valid").0
+    Stage::read(&folder().join(format!("{name}.toml")))
+        .expect("the open stages are valid")
+        .0
 }
 
 fn expected(name: &str) -> Value {
-    let text = std::fs::read_to_string(folder().join(format!("{name}.json"))).expect("an expected file");
+    let text =
+        std::fs::read_to_string(folder().join(format!("{name}.json"))).expect("an expected file");
     serde_json::from_str(&text).expect("valid JSON")
 }
 
 fn numbers(value: &Value) -> Vec<f64> {
-    value.as_array().expect("a list").iter().map(|v| v.as_f64().unwrap_or(f64::NAN)).collect()
+    value
+        .as_array()
+        .expect("a list")
+        .iter()
+        .map(|v| v.as_f64().unwrap_or(f64::NAN))
+        .collect()
 }
 
 fn number(value: &Value) -> f64 {
@@ -51,16 +59,31 @@ fn bias_voltages_and_currents_are_the_reference_s() {
     for name in STAGES {
         let report = cleanswing::measure::bias::bias(&stage(name)).expect("a bias");
         let expected = &expected(name)["bias"];
-        let rail = report.supply.iter().map(|rail| rail.volts.abs()).fold(0.0, f64::max);
+        let rail = report
+            .supply
+            .iter()
+            .map(|rail| rail.volts.abs())
+            .fold(0.0, f64::max);
         for (node, volts) in expected["nodes"].as_object().expect("nodes") {
-            let found = report.nodes.iter().find(|(name, _)| name == node).map(|(_, v)| *v);
+            let found = report
+                .nodes
+                .iter()
+                .find(|(name, _)| name == node)
+                .map(|(_, v)| *v);
             let found = found.unwrap_or_else(|| panic!("{name}: no node {node}"));
             let error = (found - number(volts)).abs() / rail;
             // the reference is printed to ten digits
-            assert!(error < 1e-9, "{name}: {node} is {found}, expected {volts}, off by {error:e} of the rail");
+            assert!(
+                error < 1e-9,
+                "{name}: {node} is {found}, expected {volts}, off by {error:e} of the rail"
+            );
         }
         for (transistor, values) in expected["transistors"].as_object().expect("transistors") {
-            let found = report.transistors.iter().find(|t| t.name == *transistor).expect("the transistor");
+            let found = report
+                .transistors
+                .iter()
+                .find(|t| t.name == *transistor)
+                .expect("the transistor");
             for (key, value) in [("IC", found.collector_current), ("IB", found.base_current)] {
                 let wanted = number(&values[key]);
                 let error = (value - wanted).abs();
@@ -77,7 +100,11 @@ fn bias_voltages_and_currents_are_the_reference_s() {
             assert_eq!(found.region.word(), word, "{name}: {transistor}");
         }
         for (diode, values) in expected["diodes"].as_object().into_iter().flatten() {
-            let found = report.diodes.iter().find(|d| d.name == *diode).expect("the diode");
+            let found = report
+                .diodes
+                .iter()
+                .find(|d| d.name == *diode)
+                .expect("the diode");
             let wanted = number(&values["I"]);
             assert!(
                 (found.current - wanted).abs() < 1e-8 * wanted.abs() + 1e-15,
@@ -103,7 +130,10 @@ fn the_complex_gain_is_the_reference_s() {
             let wanted = Complex64::new(real[k], imaginary[k]);
             let error = (found - wanted).norm() / wanted.norm();
             // printed to ten or eleven digits
-            assert!(error < 1e-8, "{name} at {frequency} Hz: {found}, expected {wanted}, off by {error:e}");
+            assert!(
+                error < 1e-8,
+                "{name} at {frequency} Hz: {found}, expected {wanted}, off by {error:e}"
+            );
         }
     }
 }
@@ -132,11 +162,17 @@ fn harmonics_and_thd_are_the_reference_s_at_every_level() {
     for name in STAGES {
         let stage = stage(name);
         let mut worst = (0.0f64, 0.0f64);
-        for set in expected(name)["harmonics"].as_array().expect("harmonic sets") {
+        for set in expected(name)["harmonics"]
+            .as_array()
+            .expect("harmonic sets")
+        {
             let frequency = number(&set["frequency_Hz"]);
             let level = number(&set["emf_rms_V"]);
-            let request =
-                DistortionRequest { levels: vec![level], frequencies: vec![frequency], bandwidth: Some(80e3) };
+            let request = DistortionRequest {
+                levels: vec![level],
+                frequencies: vec![frequency],
+                bandwidth: Some(80e3),
+            };
             let place = format!("{name} at {frequency} Hz, {level} V");
             let report = match distortion(&stage, &request) {
                 Ok(report) => report,
@@ -161,13 +197,23 @@ fn harmonics_and_thd_are_the_reference_s_at_every_level() {
                 failures.push(format!("{place}: harmonics off by {error:e} of H1"));
             }
             if thd > 1e-5 {
-                failures.push(format!("{place}: THD off by {thd:e}, {:?} against {wanted}", point.thd));
+                failures.push(format!(
+                    "{place}: THD off by {thd:e}, {:?} against {wanted}",
+                    point.thd
+                ));
             }
-            if point.harmonics_in_thd != set["harmonics_in_THD"].as_u64().expect("a count") as usize {
-                failures.push(format!("{place}: {} harmonics in THD", point.harmonics_in_thd));
+            if point.harmonics_in_thd != set["harmonics_in_THD"].as_u64().expect("a count") as usize
+            {
+                failures.push(format!(
+                    "{place}: {} harmonics in THD",
+                    point.harmonics_in_thd
+                ));
             }
         }
-        println!("{name}: harmonics within {:.1e} of H1, THD within {:.1e}", worst.0, worst.1);
+        println!(
+            "{name}: harmonics within {:.1e} of H1, THD within {:.1e}",
+            worst.0, worst.1
+        );
     }
     assert!(failures.is_empty(), "{}", failures.join("\n"));
 }

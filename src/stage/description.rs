@@ -1,5 +1,6 @@
 //! The data a checked stage file holds. All values in SI base units; temperatures in kelvin.
 
+pub use crate::device::Ratings;
 use crate::device::{DiodeParameters, Polarity, TransistorParameters};
 
 /// A whole checked stage.
@@ -199,27 +200,6 @@ pub enum TrackLaw {
     Audio,
     /// The audio law from the other end: `1 − audio(1 − turn)`.
     ReverseAudio,
-}
-
-/// Ratings a part may carry; `None` where not stated.
-#[derive(Clone, Debug, Default, PartialEq)]
-pub struct Ratings {
-    /// Resistor dissipation, W.
-    pub watts: Option<f64>,
-    /// Capacitor voltage, V.
-    pub volts: Option<f64>,
-    /// Transistor collector–emitter voltage, V.
-    pub collector_emitter_volts: Option<f64>,
-    /// Transistor collector current, A.
-    pub collector_current: Option<f64>,
-    /// Reverse emitter–base voltage, V.
-    pub emitter_base_volts: Option<f64>,
-    /// Diode forward current, A.
-    pub forward_current: Option<f64>,
-    /// Diode reverse voltage, V.
-    pub reverse_volts: Option<f64>,
-    /// Device dissipation, W.
-    pub dissipation: Option<f64>,
 }
 
 /// One entry of `[targets]`.
