@@ -1,1 +1,7 @@
-//! To come.
+//! Sound in files and sample streams: WAV in and out, dither, change of rate by whole factors,
+//! generated signals, level measurements. Knows no stage and no engine; full scale is ±1.
+
+pub mod error;
+pub mod oversample;
+
+pub use error::AudioError;
