@@ -1,7 +1,10 @@
 //! Sound in files and sample streams: WAV in and out, dither, change of rate by whole factors,
 //! generated signals, level measurements. Knows no stage and no engine; full scale is ±1.
 
+pub mod dither;
 pub mod error;
 pub mod oversample;
+pub mod random;
+pub mod wav;
 
 pub use error::AudioError;
