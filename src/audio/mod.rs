@@ -3,8 +3,10 @@
 
 pub mod dither;
 pub mod error;
+pub mod levels;
 pub mod oversample;
 pub mod random;
+pub mod signals;
 pub mod wav;
 
 pub use error::AudioError;
