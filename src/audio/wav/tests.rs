@@ -447,7 +447,7 @@ fn contradictory_headers_are_refused() {
         AudioError::Malformed { .. }
     ));
     let mut wide = fmt(1, 1, 48_000, 16);
-    wide[12] = 4;
+    wide[12] = 1;
     assert!(matches!(
         refusal(&riff(&[chunk(b"fmt ", &wide), chunk(b"data", &[0; 4])])),
         AudioError::Malformed { .. }
@@ -503,29 +503,54 @@ fn extra_chunks_of_odd_length_and_trailing_ones_are_stepped_over() {
     );
 }
 
-#[test]
-fn extensible_headers_are_read_with_the_bits_at_the_top_of_their_container() {
-    let folder = folder();
-    // 24 bits in use of 32: the low byte is padding, whatever it holds.
-    let mut format = fmt(EXTENSIBLE_MARK, 1, 48_000, 32);
-    format.extend([22, 0, 24, 0, 4, 0, 0, 0, 1, 0]);
+fn extensible(bits: u16, used_bits: u8, coding: u8) -> Vec<u8> {
+    let mut format = fmt(EXTENSIBLE_MARK, 1, 48_000, bits);
+    format.extend([22, 0, used_bits, 0, 4, 0, 0, 0, coding, 0]);
     format.extend([
         0x00, 0x00, 0x00, 0x00, 0x10, 0x00, 0x80, 0x00, 0x00, 0xaa, 0x00, 0x38, 0x9b, 0x71,
     ]);
-    let data = chunk(b"data", &(-0x4000_0000_i32).to_le_bytes());
-    let file = riff(&[chunk(b"fmt ", &format), data.clone()]);
-    assert_eq!(
-        WavReader::open(&put(&folder, "a.wav", &file))
+    chunk(b"fmt ", &format)
+}
+
+#[test]
+fn extensible_headers_are_read() {
+    let folder = folder();
+    let half = [(24, 24, 1), (24, 0, 1), (32, 32, 1), (32, 32, 3)];
+    for (bits, used_bits, coding) in half {
+        let data = match (bits, coding) {
+            (24, _) => vec![0x00, 0x00, 0xc0],
+            (_, 1) => (-0x4000_0000_i32).to_le_bytes().to_vec(),
+            _ => (-0.5_f32).to_le_bytes().to_vec(),
+        };
+        let file = riff(&[extensible(bits, used_bits, coding), chunk(b"data", &data)]);
+        let found = WavReader::open(&put(&folder, "a.wav", &file))
             .unwrap()
             .read_all()
-            .unwrap(),
-        [[-0.5]]
-    );
-    *format.last_mut().unwrap() = 0;
+            .unwrap();
+        assert_eq!(found, [[-0.5]], "{bits} bits, coding {coding}");
+    }
+    let mut foreign = extensible(16, 16, 1);
+    *foreign.last_mut().unwrap() = 0;
+    let data = chunk(b"data", &[0; 4]);
     assert!(matches!(
-        refusal(&riff(&[chunk(b"fmt ", &format), data])),
+        refusal(&riff(&[foreign, data])),
         AudioError::Unsupported { .. }
     ));
+}
+
+#[test]
+fn samples_smaller_than_their_room_are_refused_not_guessed() {
+    let data = chunk(b"data", &[0; 8]);
+    let mut plain = fmt(1, 1, 48_000, 24);
+    plain[12] = 4;
+    for format in [extensible(32, 24, 1), chunk(b"fmt ", &plain)] {
+        let error = refusal(&riff(&[format, data.clone()]));
+        assert!(matches!(error, AudioError::Unsupported { .. }), "{error}");
+        assert!(
+            error.to_string().contains("24 bits in the room of 32"),
+            "{error}"
+        );
+    }
 }
 
 const EXTENSIBLE_MARK: u16 = 0xfffe;
