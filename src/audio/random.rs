@@ -39,7 +39,8 @@ mod tests {
 
     #[test]
     fn bits_follow_the_published_generator() {
-        // First outputs of SplitMix64 from state 1234567: the widely reproduced check values.
+        // First outputs of SplitMix64 from state 1234567: check values from memory, as
+        // reproduced wherever the generator is.
         let mut random = Random { state: 1_234_567 };
         let published = [
             6_457_827_717_110_365_317,

@@ -114,7 +114,10 @@ impl StageState {
     fn deal(&mut self, input: &[f64]) {
         for &sample in input {
             self.phases[self.next_phase].push(sample);
-            self.next_phase = (self.next_phase + 1) % self.phases.len();
+            self.next_phase += 1;
+            if self.next_phase == self.phases.len() {
+                self.next_phase = 0;
+            }
         }
     }
 

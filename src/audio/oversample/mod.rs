@@ -1,6 +1,8 @@
 //! Change of the sampling rate by a whole factor, up before an engine and down after it.
 //!
-//! Up:   y[j] = Σₖ x[k]·h(j − k·m)          down:   y[i] = 1/m · Σⱼ u[j]·h(j − i·m)
+//! ```text
+//! up:  y[j] = Σₖ x[k]·h(j − k·m)          down:  y[i] = 1/m · Σⱼ u[j]·h(j − i·m)
+//! ```
 //!
 //! with one symmetric low-pass h of gain m for both, run as a cascade of such stages, the cheap
 //! short ones at the high rates (R. E. Crochiere, L. R. Rabiner, "Multirate Digital Signal
