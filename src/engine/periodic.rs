@@ -324,6 +324,9 @@ impl<'a> PeriodicSolver<'a> {
                 coarse.map.as_ref(),
             )?;
             let change = self.change(&coarse, &fine);
+            if std::env::var_os("TRACE").is_some() {
+                eprintln!("bisection changes {change:.3e}");
+            }
             let solution = self.solution(fine, fine_start, coarse.map.as_ref(), change);
             if best
                 .as_ref()
@@ -378,6 +381,9 @@ impl<'a> PeriodicSolver<'a> {
                 true,
             )?;
             let change = self.newton_update(&pass, start, pass.map.as_ref())?;
+            if std::env::var_os("TRACE").is_some() {
+                eprintln!("adaptive {local_error:.1e}: {} elements, change {change:.3e}", pass.mesh.len());
+            }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
             }
@@ -409,6 +415,9 @@ impl<'a> PeriodicSolver<'a> {
                 map = Some(fresh);
             }
             let change = self.newton_update(&pass, start, map.as_ref())?;
+            if std::env::var_os("TRACE").is_some() {
+                eprintln!("  fixed: {} elements, change {change:.3e}, map {sensitive}", mesh.len());
+            }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
             }
@@ -728,6 +737,9 @@ impl<'s, 'a> Sweep<'s, 'a> {
             } else {
                 f64::INFINITY
             };
+            if std::env::var_os("TRACE2").is_some() {
+                eprintln!("L{} at {:.12} err {error:.3e} v {:?} pred {:?} y {:?} yp {:?} it {}", element.level, element.phase(0.0), self.v, self.predicted, self.y, self.y_predicted, self.solver.stepper.iterations);
+            }
             if error > 1.0 && element.level < FINEST - 4 {
                 element.level += if error > 256.0 { 2 } else { 1 };
                 element.level = element.level.min(FINEST - 4);
@@ -735,6 +747,18 @@ impl<'s, 'a> Sweep<'s, 'a> {
             }
             if error == f64::INFINITY {
                 return Err(self.no_step(element));
+            }
+            if self.pass.mesh.len() >= MOST_ELEMENTS {
+                if std::env::var_os("TRACE").is_some() {
+                    let mut count = std::collections::BTreeMap::new();
+                    for e in &self.pass.mesh { *count.entry(e.level).or_insert(0) += 1; }
+                    eprintln!("levels {count:?} at phase {}", element.phase(0.0));
+                    for e in &self.pass.mesh[19990..] { eprint!(" {}", e.level); }
+                    let n = self.pass.outputs.len();
+                    let p = self.pass.ports.len();
+                    eprintln!("\ny {:?} v {:?} anchor {:?} predicted {:?} {:?} yscale {}", &self.pass.outputs[n-6..], &self.pass.ports[p-6..], self.solver.bank.anchor(), self.predicted, self.y_predicted, self.y_scale);
+                }
+                return Err(self.solver.no_period(self.y_scale, "the mesh grew beyond bounds"));
             }
             self.accept(element);
             let mut next = Element {
@@ -889,6 +913,8 @@ impl<'s, 'a> Sweep<'s, 'a> {
     }
 }
 
+/// Most elements of one period.
+const MOST_ELEMENTS: usize = 20_000;
 /// Distance from the extrapolation allowed at a port, in widths of its exponential.
 const PORT_ERROR: f64 = 0.3;
 

@@ -14,7 +14,7 @@
 
 use super::assembly::{Assembly, Probe};
 use super::elements::Network;
-use crate::numeric::{Lane, Matrix};
+use crate::numeric::{Factored, Lane, Matrix};
 use nalgebra::DMatrix;
 
 /// Conductance put across every port in the linear part, S. Any positive value is exact; this one lies between the
@@ -82,58 +82,35 @@ impl Reduction<f64> {
     ///
     /// # Errors
     /// Where the equations of the linear part are singular.
-    pub fn of(
-        network: &Network,
-        drive: usize,
-        scheme: &Scheme,
-    ) -> Result<Self, UndeterminedNetwork> {
+    pub fn of(network: &Network, drive: usize, scheme: &Scheme) -> Result<Self, UndeterminedNetwork> {
         let assembly = Assembly::of(network, PORT_CONDUCTANCE);
-        let system = StageSystem {
-            assembly: &assembly,
-            scheme,
-            drive,
-        };
+        let system = StageSystem::new(network, &assembly, scheme, drive)?;
         let ports = assembly.port_probes(network);
-        let states = assembly.state_probes(network);
         let output = [assembly.probe(network, network.output, 0)];
         let factored = system.matrix().lu();
         let solve = |right: DMatrix<f64>| {
             let solution = factored.solve(&right).ok_or(UndeterminedNetwork)?;
-            solution
-                .iter()
-                .all(|value| value.is_finite())
-                .then_some(solution)
-                .ok_or(UndeterminedNetwork)
+            solution.iter().all(|value| value.is_finite()).then_some(solution).ok_or(UndeterminedNetwork)
         };
-        let from_state = solve(system.state_columns(network))?;
+        let from_state = solve(system.state_columns())?;
         let from_drive = solve(system.drive_columns())?;
         let from_current = solve(system.port_columns(&ports))?;
-        let all = 0..scheme.stages();
-        let last = scheme.stages() - 1..scheme.stages();
-        let read =
-            |probes: &[Probe],
-             stages: std::ops::Range<usize>,
-             solution: &DMatrix<f64>,
-             direct: bool| { system.read(probes, stages, solution, direct) };
-        let ports_from_current = read(&ports, all.clone(), &from_current, false);
+        let ports_from_current = system.read(&ports, &from_current, false);
         Ok(Reduction {
             stages: scheme.stages(),
             ports: ports.len(),
             rates: scheme.rates.clone(),
-            history_rates: all
-                .clone()
-                .map(|stage| scheme.history_rate(stage))
-                .collect(),
+            history_rates: (0..scheme.stages()).map(|stage| scheme.history_rate(stage)).collect(),
             ports_from_charge: system.act_on_charges(&ports_from_current, ports.len()),
-            ports_from_state: read(&ports, all.clone(), &from_state, false),
-            ports_from_drive: read(&ports, all.clone(), &from_drive, true),
+            ports_from_state: system.read(&ports, &from_state, false),
+            ports_from_drive: system.read(&ports, &from_drive, true),
             ports_from_current,
-            state_from_state: read(&states, last.clone(), &from_state, false),
-            state_from_drive: read(&states, last.clone(), &from_drive, true),
-            state_from_current: read(&states, last, &from_current, false),
-            output_from_state: read(&output, all.clone(), &from_state, false),
-            output_from_drive: read(&output, all.clone(), &from_drive, true),
-            output_from_current: read(&output, all, &from_current, false),
+            state_from_state: system.end_states(&from_state, true),
+            state_from_drive: system.end_states(&from_drive, false),
+            state_from_current: system.end_states(&from_current, false),
+            output_from_state: system.read(&output, &from_state, false),
+            output_from_drive: system.read(&output, &from_drive, true),
+            output_from_current: system.read(&output, &from_current, false),
         })
     }
 
@@ -164,64 +141,145 @@ impl Reduction<f64> {
 }
 
 /// The equations of all stages together, stage-major.
+///
+/// Per stage the unknowns are the node voltages and inductor currents of the assembly, then the capacitor currents.
+/// Capacitors and inductors stand in integrated form, with T the inverse of the rates (for a Runge–Kutta method its
+/// coefficients times the step):
+///
+/// ```text
+/// v_i − Σ Tij·i_j/C = q0/C        i_i − Σ Tij·v_j/L = φ0/L
+/// ```
+/// so that a microsecond's step over hundreds of microfarads meets no conductance beside which the circuit's own is
+/// rounding.
 struct StageSystem<'a> {
+    network: &'a Network,
     assembly: &'a Assembly,
     scheme: &'a Scheme,
     drive: usize,
+    /// T in s, s × s; empty where there are no states.
+    times: Matrix<f64>,
+    /// Voltage of each capacitor.
+    capacitor_probes: Vec<Probe>,
 }
 
-impl StageSystem<'_> {
+impl<'a> StageSystem<'a> {
+    fn new(
+        network: &'a Network,
+        assembly: &'a Assembly,
+        scheme: &'a Scheme,
+        drive: usize,
+    ) -> Result<Self, UndeterminedNetwork> {
+        let stages = scheme.stages();
+        let times = if network.linear_states() == 0 {
+            Matrix::zero(stages, stages)
+        } else {
+            Factored::of(&scheme.rates).map_err(|_| UndeterminedNetwork)?.solve_matrix(&Matrix::identity(stages))
+        };
+        let capacitor_probes = network
+            .capacitors
+            .iter()
+            .map(|capacitor| assembly.probe(network, capacitor.pins[0], capacitor.pins[1]))
+            .collect();
+        Ok(StageSystem { network, assembly, scheme, drive, times, capacitor_probes })
+    }
+
+    /// Unknowns of one stage.
     fn size(&self) -> usize {
-        self.assembly.size()
+        self.assembly.size() + self.capacitor_probes.len()
+    }
+
+    fn stages(&self) -> usize {
+        self.scheme.stages()
     }
 
     fn total(&self) -> usize {
-        self.size() * self.scheme.stages()
+        self.size() * self.stages()
     }
 
-    fn stage_pairs(&self) -> impl Iterator<Item = (usize, usize, f64)> + '_ {
-        let stages = self.scheme.stages();
-        (0..stages).flat_map(move |i| (0..stages).map(move |j| (i, j, self.scheme.rates[(i, j)])))
+    fn stage_pairs(&self) -> impl Iterator<Item = (usize, usize)> + use<> {
+        let stages = self.stages();
+        (0..stages).flat_map(move |i| (0..stages).map(move |j| (i, j)))
     }
 
-    /// δij·G + αij·C in block (i, j).
+    /// Row and column of inductor number `k` within a stage.
+    fn inductor_row(&self, k: usize) -> usize {
+        self.assembly.nodes + k
+    }
+
+    /// Row and column of capacitor number `k` within a stage.
+    fn capacitor_row(&self, k: usize) -> usize {
+        self.assembly.size() + k
+    }
+
     fn matrix(&self) -> DMatrix<f64> {
         let size = self.size();
         let mut matrix = DMatrix::zeros(self.total(), self.total());
-        for (i, j, rate) in self.stage_pairs() {
+        for (i, j) in self.stage_pairs() {
             let mut block = matrix.view_mut((i * size, j * size), (size, size));
-            block += &self.assembly.capacitance * rate;
+            let conductance = &self.assembly.conductance;
             if i == j {
-                block += &self.assembly.conductance;
+                let nodes = self.assembly.nodes;
+                block
+                    .view_mut((0, 0), (nodes, self.assembly.size()))
+                    .copy_from(&conductance.view((0, 0), (nodes, self.assembly.size())));
+            }
+            for (k, inductor) in self.network.inductors.iter().enumerate() {
+                let row = self.inductor_row(k);
+                let factor = self.times[(i, j)] / inductor.henries;
+                for column in 0..self.assembly.size() {
+                    block[(row, column)] += factor * conductance[(row, column)];
+                }
+                if i == j {
+                    block[(row, row)] += 1.0;
+                }
+            }
+            for (k, capacitor) in self.network.capacitors.iter().enumerate() {
+                let row = self.capacitor_row(k);
+                block[(row, row)] -= self.times[(i, j)] / capacitor.farads;
+                if i == j {
+                    for (node, sign) in self.capacitor_probes[k].unknowns.iter().enumerate() {
+                        block[(row, node)] += sign;
+                        block[(node, row)] += sign;
+                    }
+                }
             }
         }
         matrix
     }
 
-    /// βi times the state's incidence: what the starting charge puts into stage i.
-    fn state_columns(&self, network: &Network) -> DMatrix<f64> {
-        let incidence = self.assembly.state_incidence(network);
-        let mut right = DMatrix::zeros(self.total(), incidence.len());
-        for (column, state) in incidence.iter().enumerate() {
-            for stage in 0..self.scheme.stages() {
-                let rate = self.scheme.history_rate(stage);
-                right
-                    .view_mut((stage * self.size(), column), (self.size(), 1))
-                    .copy_from(&(state * rate));
+    /// What a unit of each starting charge or flux puts into every stage.
+    fn state_columns(&self) -> DMatrix<f64> {
+        let capacitors = self.network.capacitors.len();
+        let mut right = DMatrix::zeros(self.total(), self.network.linear_states());
+        for stage in 0..self.stages() {
+            let first = stage * self.size();
+            for (k, capacitor) in self.network.capacitors.iter().enumerate() {
+                right[(first + self.capacitor_row(k), k)] = 1.0 / capacitor.farads;
+            }
+            for (k, inductor) in self.network.inductors.iter().enumerate() {
+                right[(first + self.inductor_row(k), capacitors + k)] = 1.0 / inductor.henries;
             }
         }
         right
     }
 
-    /// δij·Gu + αij·Cu in block (i, j), for the one drive.
+    /// What a unit of the drive at each stage puts into every stage.
     fn drive_columns(&self) -> DMatrix<f64> {
-        let size = self.size();
-        let mut right = DMatrix::zeros(self.total(), self.scheme.stages());
-        for (i, j, rate) in self.stage_pairs() {
-            let mut block = right.view_mut((i * size, j), (size, 1));
-            block += self.assembly.drive_capacitance.column(self.drive) * rate;
+        let mut right = DMatrix::zeros(self.total(), self.stages());
+        let direct = self.assembly.drive_conductance.column(self.drive);
+        for (i, j) in self.stage_pairs() {
+            let first = i * self.size();
             if i == j {
-                block += self.assembly.drive_conductance.column(self.drive);
+                for row in 0..self.assembly.nodes {
+                    right[(first + row, j)] += direct[row];
+                }
+                for (k, probe) in self.capacitor_probes.iter().enumerate() {
+                    right[(first + self.capacitor_row(k), j)] -= probe.drives[self.drive];
+                }
+            }
+            for (k, inductor) in self.network.inductors.iter().enumerate() {
+                let row = self.inductor_row(k);
+                right[(first + row, j)] += self.times[(i, j)] / inductor.henries * direct[row];
             }
         }
         right
@@ -229,34 +287,25 @@ impl StageSystem<'_> {
 
     /// A unit current leaving the network through each port of each stage, negated: v = … − K·j.
     fn port_columns(&self, ports: &[Probe]) -> DMatrix<f64> {
-        let mut right = DMatrix::zeros(self.total(), ports.len() * self.scheme.stages());
-        for stage in 0..self.scheme.stages() {
+        let mut right = DMatrix::zeros(self.total(), ports.len() * self.stages());
+        for stage in 0..self.stages() {
             for (port, probe) in ports.iter().enumerate() {
                 right
-                    .view_mut(
-                        (stage * self.size(), stage * ports.len() + port),
-                        (self.size(), 1),
-                    )
+                    .view_mut((stage * self.size(), stage * ports.len() + port), (self.assembly.size(), 1))
                     .copy_from(&probe.unknowns);
             }
         }
         right
     }
 
-    /// The probes at the given stages, from the solution of all stages; `direct` adds what the drive gives directly.
-    fn read(
-        &self,
-        probes: &[Probe],
-        stages: std::ops::Range<usize>,
-        solution: &DMatrix<f64>,
-        direct: bool,
-    ) -> Matrix<f64> {
-        let mut result = Matrix::zero(stages.len() * probes.len(), solution.ncols());
-        for (row_block, stage) in stages.enumerate() {
+    /// The probes at every stage, from a solution; `direct` adds what the drive gives directly.
+    fn read(&self, probes: &[Probe], solution: &DMatrix<f64>, direct: bool) -> Matrix<f64> {
+        let mut result = Matrix::zero(self.stages() * probes.len(), solution.ncols());
+        for stage in 0..self.stages() {
             for (k, probe) in probes.iter().enumerate() {
-                let row = row_block * probes.len() + k;
+                let row = stage * probes.len() + k;
                 for column in 0..solution.ncols() {
-                    let unknowns = solution.view((stage * self.size(), column), (self.size(), 1));
+                    let unknowns = solution.view((stage * self.size(), column), (self.assembly.size(), 1));
                     result[(row, column)] = unknowns.dot(&probe.unknowns);
                 }
                 if direct {
@@ -267,11 +316,34 @@ impl StageSystem<'_> {
         result
     }
 
+    /// Charges and fluxes at the end of the step: what they started with (`carried`) plus the integral of their
+    /// currents; a flux from the inductor's current itself.
+    fn end_states(&self, solution: &DMatrix<f64>, carried: bool) -> Matrix<f64> {
+        let capacitors = self.network.capacitors.len();
+        let mut result = Matrix::zero(self.network.linear_states(), solution.ncols());
+        let last = self.stages() - 1;
+        for column in 0..solution.ncols() {
+            for k in 0..capacitors {
+                let row = self.capacitor_row(k);
+                let moved: f64 = (0..self.stages())
+                    .map(|stage| self.times[(last, stage)] * solution[(stage * self.size() + row, column)])
+                    .sum();
+                result[(k, column)] = moved + if carried && k == column { 1.0 } else { 0.0 };
+            }
+            for (k, inductor) in self.network.inductors.iter().enumerate() {
+                let current = solution[(last * self.size() + self.inductor_row(k), column)];
+                result[(capacitors + k, column)] = inductor.henries * current;
+            }
+        }
+        result
+    }
+
     /// K·(α ⊗ I).
     fn act_on_charges(&self, from_current: &Matrix<f64>, ports: usize) -> Matrix<f64> {
         let mut result = Matrix::zero(from_current.rows(), from_current.columns());
         for row in 0..from_current.rows() {
-            for (i, j, rate) in self.stage_pairs() {
+            for (i, j) in self.stage_pairs() {
+                let rate = self.scheme.rates[(i, j)];
                 for port in 0..ports {
                     result[(row, j * ports + port)] += from_current[(row, i * ports + port)] * rate;
                 }
