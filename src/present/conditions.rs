@@ -7,7 +7,10 @@ use crate::measure::report::Conditions;
 pub(super) fn lines(conditions: &Conditions) -> Vec<String> {
     let mut lines = vec![holding(conditions)];
     if !conditions.assumed.is_empty() {
-        lines.push(format!("assumed: {}", plain(&conditions.assumed.join(", "))));
+        lines.push(format!(
+            "assumed: {}",
+            plain(&conditions.assumed.join(", "))
+        ));
     }
     if !conditions.overrides.is_empty() {
         lines.push(format!("set: {}", plain(&conditions.overrides.join(", "))));
@@ -17,11 +20,19 @@ pub(super) fn lines(conditions: &Conditions) -> Vec<String> {
 
 fn holding(conditions: &Conditions) -> String {
     let mut words = vec![
-        format!("{} °C", trimmed(&format!("{:.2}", celsius(conditions.temperature)))),
+        format!(
+            "{} °C",
+            trimmed(&format!("{:.2}", celsius(conditions.temperature)))
+        ),
         format!("source {}", source(conditions)),
         format!("load {}", load(conditions)),
     ];
-    words.extend(conditions.rails.iter().map(|(name, volts)| format!("{} {}", plain(name), stated(*volts, "V"))));
+    words.extend(
+        conditions
+            .rails
+            .iter()
+            .map(|(name, volts)| format!("{} {}", plain(name), stated(*volts, "V"))),
+    );
     words.join(", ")
 }
 
@@ -37,8 +48,12 @@ fn source(conditions: &Conditions) -> String {
 }
 
 fn load(conditions: &Conditions) -> String {
-    let capacitance = (conditions.load_capacitance != 0.0).then(|| stated(conditions.load_capacitance, "F"));
-    match (conditions.load_resistance.map(|ohms| stated(ohms, "Ω")), capacitance) {
+    let capacitance =
+        (conditions.load_capacitance != 0.0).then(|| stated(conditions.load_capacitance, "F"));
+    match (
+        conditions.load_resistance.map(|ohms| stated(ohms, "Ω")),
+        capacitance,
+    ) {
         (Some(resistance), Some(capacitance)) => format!("{resistance} ∥ {capacitance}"),
         (Some(only), None) | (None, Some(only)) => only,
         (None, None) => "none".to_string(),
@@ -59,7 +74,10 @@ mod tests {
             load_capacitance: 100e-12,
             ..sample::conditions()
         };
-        assert_eq!(lines(&conditions)[0], "25 °C, source 600 Ω + 3.2 H ∥ 620 pF, load 47 kΩ ∥ 100 pF, vcc 12 V");
+        assert_eq!(
+            lines(&conditions)[0],
+            "25 °C, source 600 Ω + 3.2 H ∥ 620 pF, load 47 kΩ ∥ 100 pF, vcc 12 V"
+        );
     }
 
     #[test]
@@ -73,7 +91,11 @@ mod tests {
         };
         assert_eq!(
             lines(&conditions),
-            ["25 °C, source 0 Ω, load none, vcc 12 V", "assumed: 0 Ω source, no load", "set: RC=2k2"]
+            [
+                "25 °C, source 0 Ω, load none, vcc 12 V",
+                "assumed: 0 Ω source, no load",
+                "set: RC=2k2"
+            ]
         );
     }
 }

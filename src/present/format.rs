@@ -51,7 +51,10 @@ fn engineering(value: f64, unit: &str, digits: usize, trim: bool) -> String {
 fn split(value: f64, digits: usize) -> (f64, i32) {
     let printed = format!("{:.*e}", digits.saturating_sub(1), value);
     let (mantissa, power) = printed.split_once('e').unwrap_or((&printed, "0"));
-    (mantissa.parse().unwrap_or(value), power.parse().unwrap_or(0))
+    (
+        mantissa.parse().unwrap_or(value),
+        power.parse().unwrap_or(0),
+    )
 }
 
 /// A decimal without its trailing zeros.
@@ -119,7 +122,9 @@ pub(super) fn celsius(kelvin: f64) -> f64 {
 /// Text from a stage file on one line, without control characters: they would move a terminal's cursor and are not
 /// allowed in SVG.
 pub(super) fn plain(text: &str) -> String {
-    text.chars().map(|c| if c.is_control() { ' ' } else { c }).collect()
+    text.chars()
+        .map(|c| if c.is_control() { ' ' } else { c })
+        .collect()
 }
 
 #[cfg(test)]

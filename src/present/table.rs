@@ -20,7 +20,10 @@ pub(super) struct Table {
 impl Table {
     /// An empty table with its headings.
     pub(super) fn new(columns: &[(&'static str, Side)]) -> Self {
-        Table { columns: columns.to_vec(), rows: Vec::new() }
+        Table {
+            columns: columns.to_vec(),
+            rows: Vec::new(),
+        }
     }
 
     /// Add one row, a cell a column.
@@ -55,7 +58,10 @@ impl Table {
 
     fn width(&self, index: usize) -> usize {
         let cells = self.rows.iter().map(|row| row[index].width());
-        cells.chain([self.columns[index].0.width()]).max().unwrap_or(0)
+        cells
+            .chain([self.columns[index].0.width()])
+            .max()
+            .unwrap_or(0)
     }
 }
 
@@ -68,7 +74,10 @@ mod tests {
         let mut table = Table::new(&[("node", Side::Left), ("rπ", Side::Right)]);
         table.row(vec!["入力".into(), "1 kΩ".into()]);
         table.row(vec!["é".into(), "10 kΩ".into()]);
-        assert_eq!(table.lines(), "  node     rπ\n  入力   1 kΩ\n  é     10 kΩ\n");
+        assert_eq!(
+            table.lines(),
+            "  node     rπ\n  入力   1 kΩ\n  é     10 kΩ\n"
+        );
     }
 
     #[test]

@@ -16,7 +16,11 @@ pub fn bias(report: &BiasReport) -> String {
         swing(&report.static_swing) + &gain(report.gain_at_1khz),
         cautions(&report.cautions),
     ];
-    blocks.into_iter().filter(|block| !block.is_empty()).collect::<Vec<_>>().join("\n")
+    blocks
+        .into_iter()
+        .filter(|block| !block.is_empty())
+        .collect::<Vec<_>>()
+        .join("\n")
 }
 
 fn nodes(report: &BiasReport) -> String {
@@ -31,8 +35,15 @@ fn transistors(report: &BiasReport) -> String {
     if report.transistors.is_empty() {
         return String::new();
     }
-    let numbers = ["IC", "IB", "VBE", "VCE", "gm", "rπ", "ro", "dissipation"].map(|heading| (heading, Side::Right));
-    let mut table = Table::new(&[&[("transistor", Side::Left), ("region", Side::Left)], &numbers[..]].concat());
+    let numbers = ["IC", "IB", "VBE", "VCE", "gm", "rπ", "ro", "dissipation"]
+        .map(|heading| (heading, Side::Right));
+    let mut table = Table::new(
+        &[
+            &[("transistor", Side::Left), ("region", Side::Left)],
+            &numbers[..],
+        ]
+        .concat(),
+    );
     for device in &report.transistors {
         table.row(vec![
             plain(&device.name),
@@ -59,9 +70,17 @@ fn diodes(report: &BiasReport) -> String {
     if report.diodes.is_empty() {
         return String::new();
     }
-    let mut table = Table::new(&[("diode", Side::Left), ("current", Side::Right), ("voltage", Side::Right)]);
+    let mut table = Table::new(&[
+        ("diode", Side::Left),
+        ("current", Side::Right),
+        ("voltage", Side::Right),
+    ]);
     for diode in &report.diodes {
-        table.row(vec![plain(&diode.name), measured(diode.current, "A"), measured(diode.voltage, "V")]);
+        table.row(vec![
+            plain(&diode.name),
+            measured(diode.current, "A"),
+            measured(diode.voltage, "V"),
+        ]);
     }
     table.lines()
 }
@@ -70,11 +89,21 @@ fn supply(report: &BiasReport) -> String {
     if report.supply.is_empty() {
         return String::new();
     }
-    let columns = [("supply", Side::Left), ("EMF", Side::Right), ("current", Side::Right), ("power", Side::Right)];
+    let columns = [
+        ("supply", Side::Left),
+        ("EMF", Side::Right),
+        ("current", Side::Right),
+        ("power", Side::Right),
+    ];
     let mut table = Table::new(&columns);
     for rail in &report.supply {
         let (current, power) = (measured(rail.current, "A"), measured(rail.power, "W"));
-        table.row(vec![plain(&rail.name), stated(rail.volts, "V"), current, power]);
+        table.row(vec![
+            plain(&rail.name),
+            stated(rail.volts, "V"),
+            current,
+            power,
+        ]);
     }
     table.lines()
 }
@@ -89,7 +118,12 @@ fn swing(swing: &StaticSwing) -> String {
 pub(in super::super) fn one_way(volts: Option<f64>, limit: Option<&(String, Region)>) -> String {
     match (volts, limit) {
         (Some(volts), Some((part, region))) => {
-            format!("{} to {} of {}", measured(volts, "V"), region.word(), plain(part))
+            format!(
+                "{} to {} of {}",
+                measured(volts, "V"),
+                region.word(),
+                plain(part)
+            )
         }
         (Some(volts), None) => measured(volts, "V"),
         (None, _) => "not limited".to_string(),
@@ -122,15 +156,26 @@ mod tests {
         let mut report = sample::bias();
         report.transistors.clear();
         report.diodes.clear();
-        report.static_swing = StaticSwing { up: None, down: None, up_limited_by: None, down_limited_by: None };
+        report.static_swing = StaticSwing {
+            up: None,
+            down: None,
+            up_limited_by: None,
+            down_limited_by: None,
+        };
         let text = bias(&report);
-        assert!(!text.contains("transistor") && !text.contains("diode"), "{text}");
+        assert!(
+            !text.contains("transistor") && !text.contains("diode"),
+            "{text}"
+        );
         assert!(text.contains("up not limited, down not limited"), "{text}");
     }
 
     #[test]
     fn a_title_cannot_move_the_cursor() {
-        let report = BiasReport { title: "a\u{1b}[2Jb".into(), ..sample::bias() };
+        let report = BiasReport {
+            title: "a\u{1b}[2Jb".into(),
+            ..sample::bias()
+        };
         assert!(!bias(&report).contains('\u{1b}'));
     }
 }

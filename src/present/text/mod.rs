@@ -5,6 +5,7 @@ mod distortion;
 
 pub use bias::bias;
 pub use distortion::distortion;
+pub(super) use distortion::{bandwidth, definition};
 
 use super::conditions;
 use super::format::plain;
@@ -13,7 +14,10 @@ use crate::measure::report::Conditions;
 /// Cautions, a line each; empty where there are none. The tables end with them; a command that prints JSON or CSV
 /// sends them to standard error.
 pub fn cautions(cautions: &[String]) -> String {
-    cautions.iter().map(|caution| format!("caution: {}\n", plain(caution))).collect()
+    cautions
+        .iter()
+        .map(|caution| format!("caution: {}\n", plain(caution)))
+        .collect()
 }
 
 /// Title and conditions, as they stand over every table.
