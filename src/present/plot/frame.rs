@@ -43,7 +43,7 @@ impl Frame {
             picture.text(words(line, (MARGIN, y), TITLE_EM, true));
         }
         for line in wrapped(subject, SUBJECT_EM, false, room, 2) {
-            y += SUBJECT_EM * LEADING;
+            y += SUBJECT_EM * LEADING + 4.0;
             picture.text(words(line, (MARGIN, y), SUBJECT_EM, false));
         }
         let notes = remarks.iter().cloned().chain(conditions::lines(held));
@@ -61,7 +61,7 @@ impl Frame {
         }
         let middle = Area {
             left: MARGIN,
-            top: y + 18.0,
+            top: y + 28.0,
             right: width - MARGIN,
             bottom: first - NOTE_EM * LEADING - 6.0,
         };
@@ -109,10 +109,13 @@ pub(super) fn wrapped(text: &str, em: f64, bold: bool, room: f64, most: usize) -
     lines
 }
 
-/// Take letters from the end until the line fits with an ellipsis.
+/// Take words from the end until the line fits with an ellipsis; of a single endless word, letters.
 fn shorten(line: &mut String, fits: impl Fn(&str) -> bool) {
     while !line.is_empty() && !fits(&format!("{line}…")) {
-        line.pop();
+        let keep = line
+            .rfind(' ')
+            .or_else(|| line.char_indices().next_back().map(|(at, _)| at));
+        line.truncate(keep.unwrap_or(0));
     }
     line.truncate(line.trim_end().len());
     line.push('…');

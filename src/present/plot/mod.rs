@@ -168,6 +168,22 @@ mod tests {
         }
     }
 
+    /// `CLEANSWING_GALLERY=FOLDER cargo test gallery` leaves every picture in a folder, for a look.
+    #[test]
+    fn the_gallery_is_written_where_it_is_asked_for() {
+        let Some(folder) = std::env::var_os("CLEANSWING_GALLERY") else {
+            return;
+        };
+        for (name, picture) in gallery() {
+            for extension in ["svg", "png"] {
+                let path = std::path::Path::new(&folder)
+                    .join(name)
+                    .with_extension(extension);
+                PlotFile::new(&path, true).unwrap().write(&picture).unwrap();
+            }
+        }
+    }
+
     #[test]
     fn legends_name_every_curve() {
         for (name, entries) in [
@@ -207,15 +223,6 @@ mod tests {
                 drawn * 100 > pixels.len() / 3,
                 "{name}: {drawn} pixels drawn"
             );
-            if let Some(folder) = std::env::var_os("CLEANSWING_GALLERY") {
-                std::fs::write(
-                    std::path::Path::new(&folder)
-                        .join(name)
-                        .with_extension("png"),
-                    &bytes,
-                )
-                .unwrap();
-            }
         }
     }
 }

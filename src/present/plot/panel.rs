@@ -13,6 +13,8 @@ const ROW: f64 = 40.0;
 const KEY: f64 = 58.0;
 /// From a tick label to the plot, px.
 const GAP: f64 = 12.0;
+/// Least distance of two labels on the x axis, px.
+const APART: f64 = 14.0;
 
 /// One axis: its scale, its title with the unit, and how a tick is written.
 pub(super) struct Axis<'a> {
@@ -36,8 +38,8 @@ pub(super) enum Key {
 pub(super) struct Panel<'a> {
     pub(super) x: Axis<'a>,
     pub(super) y: Axis<'a>,
-    /// A second reading of the y axis on the right: title and label.
-    pub(super) second: Option<(String, &'a dyn Fn(f64) -> String)>,
+    /// A second reading of the y axis, on its right.
+    pub(super) second: Option<&'a dyn Fn(f64) -> String>,
     pub(super) legend: Vec<(String, Key)>,
     /// Room kept free to the right of the plot, px.
     pub(super) side: f64,
@@ -94,17 +96,16 @@ impl Panel<'_> {
     fn right_border(&self, x_ticks: &[Tick], y_ticks: &[Tick]) -> f64 {
         let second = self
             .second
-            .as_ref()
-            .map_or(0.0, |(_, label)| widest(y_ticks, *label) + GAP);
+            .map_or(0.0, |label| widest(y_ticks, label) + GAP);
         second
             .max(self.side)
-            .max(widest(x_ticks, self.x.label) / 2.0)
+            .max(end_label(x_ticks, self.x.label) / 2.0)
     }
 
     /// The legend in rows from the top of `room`; returns the last base line used.
     fn draw_legend(&self, picture: &mut Picture, room: Area) -> f64 {
         if self.legend.is_empty() {
-            return room.top - 8.0;
+            return room.top - 18.0;
         }
         let (mut x, mut y) = (room.left, room.top + LABEL_EM);
         for (name, key) in &self.legend {
@@ -144,50 +145,54 @@ impl Panel<'_> {
     }
 
     fn draw_labels(&self, picture: &mut Picture, plot: &Plot, x_ticks: &[Tick], y_ticks: &[Tick]) {
+        self.draw_x_labels(picture, plot, x_ticks);
+        for tick in y_ticks.iter().filter(|tick| tick.major) {
+            let y = plot.at(0.0, tick.value).1 + 0.36 * LABEL_EM;
+            let at = (plot.area.left - GAP, y);
+            let text = words((self.y.label)(tick.value), at, LABEL_EM, false);
+            picture.text(Text {
+                anchor: Anchor::Right,
+                ..text
+            });
+            if let Some(label) = &self.second {
+                let at = (plot.area.right + GAP, y);
+                picture.text(words(label(tick.value), at, LABEL_EM, false));
+            }
+        }
+    }
+
+    /// The major ticks first, then both ends of the axis (20 Hz and 20 kHz, say). A label that would touch one that
+    /// is there already is left out; its grid line stays.
+    fn draw_x_labels(&self, picture: &mut Picture, plot: &Plot, ticks: &[Tick]) {
         let Area {
             left,
             right,
             bottom,
             ..
         } = plot.area;
-        let mut free = f64::NEG_INFINITY;
-        for tick in x_ticks.iter().filter(|tick| tick.major) {
-            let at = (
-                left + plot.x.share(tick.value) * (right - left),
-                bottom + LABEL_EM + 10.0,
-            );
+        let ends = ticks.first().into_iter().chain(ticks.last());
+        let mut taken: Vec<(f64, f64)> = Vec::new();
+        for tick in ticks.iter().filter(|tick| tick.major).chain(ends) {
+            let x = left + plot.x.share(tick.value) * (right - left);
+            let at = (x, bottom + LABEL_EM + 10.0);
+            let text = words((self.x.label)(tick.value), at, LABEL_EM, false);
             let text = Text {
                 anchor: Anchor::Middle,
-                ..words((self.x.label)(tick.value), at, LABEL_EM, false)
-            };
-            // A label that would touch its neighbour is left out; its grid line stays.
-            if text.left() > free {
-                free = 2.0 * at.0 - text.left() + 14.0;
-                picture.text(text);
-            }
-        }
-        for tick in y_ticks.iter().filter(|tick| tick.major) {
-            let y = plot.at(0.0, tick.value).1 + 0.36 * LABEL_EM;
-            let text = words((self.y.label)(tick.value), (left - GAP, y), LABEL_EM, false);
-            picture.text(Text {
-                anchor: Anchor::Right,
                 ..text
-            });
-            if let Some((_, label)) = &self.second {
-                picture.text(words(label(tick.value), (right + GAP, y), LABEL_EM, false));
+            };
+            let (from, to) = (text.left(), 2.0 * x - text.left());
+            if taken
+                .iter()
+                .all(|(start, end)| to + APART < *start || from - APART > *end)
+            {
+                taken.push((from, to));
+                picture.text(text);
             }
         }
     }
 
     fn draw_titles(&self, picture: &mut Picture, room: Area, area: Area, y: f64) {
         picture.text(words(self.y.title.clone(), (room.left, y), LABEL_EM, false));
-        if let Some((title, _)) = &self.second {
-            let text = words(title.clone(), (room.right, y), LABEL_EM, false);
-            picture.text(Text {
-                anchor: Anchor::Right,
-                ..text
-            });
-        }
         let middle = ((area.left + area.right) / 2.0, room.bottom);
         let text = words(self.x.title.clone(), middle, LABEL_EM, false);
         picture.text(Text {
@@ -231,4 +236,11 @@ fn widest(ticks: &[Tick], label: &dyn Fn(f64) -> String) -> f64 {
     labels
         .map(|label| font::width(&label, LABEL_EM, false))
         .fold(0.0, f64::max)
+}
+
+/// Width of the label at the right end of the x axis.
+fn end_label(ticks: &[Tick], label: &dyn Fn(f64) -> String) -> f64 {
+    ticks
+        .last()
+        .map_or(0.0, |tick| font::width(&label(tick.value), LABEL_EM, false))
 }

@@ -16,10 +16,6 @@ pub(super) struct Area {
 }
 
 impl Area {
-    pub(super) fn width(&self) -> f64 {
-        self.right - self.left
-    }
-
     pub(super) fn corners(&self) -> Vec<Point> {
         let Area {
             left,

@@ -101,6 +101,9 @@ fn encode(pixels: &[u8], width: u32, height: u32) -> Result<Vec<u8>, PlotError> 
     let mut encoder = png::Encoder::new(&mut bytes, width, height);
     encoder.set_color(png::ColorType::Rgb);
     encoder.set_depth(png::BitDepth::Eight);
+    // Flat paper and repeated grid lines compress best unfiltered.
+    encoder.set_filter(png::FilterType::NoFilter);
+    encoder.set_compression(png::Compression::Best);
     let mut writer = encoder.write_header().map_err(PlotError::draw)?;
     writer.write_image_data(pixels).map_err(PlotError::draw)?;
     writer.finish().map_err(PlotError::draw)?;

@@ -19,11 +19,16 @@ const DECADES: i32 = 7;
 /// Decades drawn below the least THD for the harmonics.
 const BELOW_THD: i32 = 2;
 
-/// A named curve: level or frequency, and percent of H1.
+/// A named curve: level or frequency, and percent of H1 where there is one.
+type Curve = (String, Vec<(f64, Option<f64>)>);
+
+/// The curves of one sheet.
 struct Family {
-    curves: Vec<(String, Vec<(f64, Option<f64>)>)>,
+    curves: Vec<Curve>,
     /// Percent at the foot of the sheet.
     lowest: f64,
+    /// What the y axis shows, where it is one thing: `THD `.
+    what: &'static str,
 }
 
 /// THD against input level. One frequency: with harmonics 2 to 5; several: a curve each.
@@ -63,7 +68,7 @@ pub fn thd_against_frequency(report: &DistortionReport) -> Result<Picture, PlotE
     draw(
         report,
         &family,
-        "THD against frequency, source EMF rms as named",
+        "THD against frequency, for the source EMF rms named",
         remarks,
         ("frequency", &hertz),
     )
@@ -110,7 +115,11 @@ fn family(
     };
     let curves: Vec<_> = shown.iter().map(curve).collect();
     let lowest = values(&curves).fold(f64::INFINITY, f64::min);
-    Family { curves, lowest }
+    Family {
+        curves,
+        lowest,
+        what: "THD ",
+    }
 }
 
 /// Name the single curve THD and put harmonics 2 to 5 beside it.
@@ -118,6 +127,7 @@ fn with_harmonics(family: &mut Family, report: &DistortionReport) {
     if let Some(thd) = family.curves.first_mut() {
         thd.0 = "THD".to_string();
     }
+    family.what = "";
     let thd_lowest = family.lowest;
     for n in 2..=5 {
         let mut points: Vec<_> = report
@@ -142,11 +152,11 @@ fn share_of_first(point: &DistortionPoint, n: usize) -> Option<f64> {
     Some(100.0 * 10f64.powf(relative_db / 20.0))
 }
 
-fn values(curves: &[(String, Vec<(f64, Option<f64>)>)]) -> impl Iterator<Item = f64> {
+fn values(curves: &[Curve]) -> impl Iterator<Item = f64> {
     curves
         .iter()
         .flat_map(|(_, points)| points.iter().filter_map(|point| point.1))
-        .filter(|value| *value > 0.0)
+        .filter(|value| *value > 0.0 && value.is_finite())
 }
 
 fn remarks(report: &DistortionReport, shown: usize, all: usize, what: &str) -> Vec<String> {
@@ -181,9 +191,9 @@ fn draw(
     (x_title, x_label): (&str, &dyn Fn(f64) -> String),
 ) -> Result<Picture, PlotError> {
     let highest = values(&family.curves).fold(0.0, f64::max);
-    if highest <= 0.0 {
+    let Some(scale) = across(family).filter(|_| highest > 0.0) else {
         return Err(PlotError::nothing("no point of the report has a THD"));
-    }
+    };
     let mut frame = Frame::new(SHEET, &report.title, subject, &remarks, &report.conditions);
     let percent = |value: f64| format!("{} %", trimmed(&format!("{value:.9}")));
     let decibels =
@@ -192,7 +202,7 @@ fn draw(
     let names = family.curves.iter().map(|(name, _)| name.clone());
     let panel = Panel {
         x: Axis {
-            scale: across(family),
+            scale,
             title: x_title.to_string(),
             label: x_label,
             most: 7,
@@ -200,12 +210,12 @@ fn draw(
         },
         y: Axis {
             scale: upward(family.lowest, highest),
-            title: "relative to H1".to_string(),
+            title: format!("{}relative to H1", family.what),
             label: &percent,
             most: 7,
             grid: true,
         },
-        second: Some(("dB".to_string(), &decibels)),
+        second: Some(&decibels),
         legend: names
             .zip(styles.iter().map(|style| Key::Line(*style)))
             .collect(),
@@ -219,22 +229,25 @@ fn draw(
     Ok(frame.picture)
 }
 
-/// The x axis from the first to the last value of all curves; around a single one, half an octave either way.
-fn across(family: &Family) -> Scale {
+/// The x axis from the first to the last value of all curves, around a single one half an octave either way; `None`
+/// where no value has a logarithm.
+fn across(family: &Family) -> Option<Scale> {
     let places = family
         .curves
         .iter()
         .flat_map(|(_, points)| points.iter().map(|point| point.0));
-    let from = places.clone().fold(f64::INFINITY, f64::min);
-    let to = places.fold(0.0, f64::max);
-    if to > from {
-        Scale::Log { from, to }
+    let places = places.filter(|place| *place > 0.0 && place.is_finite());
+    let from = places.clone().reduce(f64::min)?;
+    let to = places.reduce(f64::max)?;
+    let reach = if to > from {
+        1.0
     } else {
-        Scale::Log {
-            from: from / 1.41,
-            to: to * 1.41,
-        }
-    }
+        std::f64::consts::SQRT_2
+    };
+    Some(Scale::Log {
+        from: from / reach,
+        to: to * reach,
+    })
 }
 
 /// The y axis in whole decades, at least one and at most `DECADES`.
@@ -271,6 +284,16 @@ mod tests {
                 .contains("no point of the report has a THD"),
             "{error}"
         );
+    }
+
+    #[test]
+    fn a_level_of_zero_and_a_figure_that_is_not_one_do_no_harm() {
+        let mut report = sample::distortion(&[1000.0], &[0.01, 0.02, 0.03]);
+        report.points[0].level = 0.0;
+        report.points[1].thd = Some(f64::INFINITY);
+        assert!(thd_against_level(&report).is_ok());
+        report.points.truncate(1);
+        assert!(thd_against_level(&report).is_err());
     }
 
     #[test]

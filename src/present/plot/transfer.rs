@@ -3,7 +3,7 @@
 use super::curve::curve;
 use super::error::PlotError;
 use super::frame::{Frame, LABEL_EM, words};
-use super::ink::{INK, PAPER, QUIET, SERIES};
+use super::ink::{PAPER, QUIET, SERIES};
 use super::panel::{Axis, Panel, Plot};
 use super::picture::Picture;
 use super::scale::Scale;
@@ -111,26 +111,37 @@ fn levels(report: &BiasReport) -> Vec<Level> {
     up.into_iter().chain([bias]).chain(down).collect()
 }
 
-/// A dashed line across the plot and a name beside it for each level; names that would touch move downward.
+/// A dashed line across the plot and a name beside it for each level.
 fn mark_levels(picture: &mut Picture, plot: &Plot, levels: &[Level]) {
     let (left, right) = (plot.area.left, plot.area.right);
-    let mut free = f64::NEG_INFINITY;
-    for (index, level) in levels.iter().enumerate() {
+    let bases = base_lines(plot, levels);
+    for (level, base) in levels.iter().zip(bases) {
         let y = plot.at(0.0, level.volts).1;
-        let colour = if index == 0 || index + 1 == levels.len() {
-            INK
-        } else {
-            QUIET
-        };
-        picture.dashed(vec![(left, y), (right + 12.0, y)], 2.0, &[9.0, 7.0], colour);
-        // The first line sits beside the level, the second under it.
-        let mut base = (y + 0.36 * LABEL_EM).max(free);
-        for line in &level.lines {
-            picture.text(words(line.clone(), (right + 20.0, base), LABEL_EM, false));
-            base += ROW;
+        picture.dashed(vec![(left, y), (right + 12.0, y)], 2.0, &[9.0, 7.0], QUIET);
+        for (row, line) in level.lines.iter().enumerate() {
+            let at = (right + 20.0, base + row as f64 * ROW);
+            picture.text(words(line.clone(), at, LABEL_EM, false));
         }
-        free = base + 6.0;
     }
+}
+
+/// The first base line of each name: beside its level, but clear of the name above it, and the last line of all no
+/// lower than the plot, where the x axis has its labels.
+fn base_lines(plot: &Plot, levels: &[Level]) -> Vec<f64> {
+    let height = |level: &Level| level.lines.len() as f64 * ROW + 6.0;
+    let mut free = f64::NEG_INFINITY;
+    let mut bases: Vec<f64> = Vec::new();
+    for level in levels {
+        let beside = plot.at(0.0, level.volts).1 + 0.36 * LABEL_EM;
+        bases.push(beside.max(free));
+        free = bases[bases.len() - 1] + height(level);
+    }
+    let mut limit = plot.area.bottom + ROW;
+    for (base, level) in bases.iter_mut().zip(levels).rev() {
+        *base = base.min(limit - height(level));
+        limit = *base;
+    }
+    bases
 }
 
 /// The unit with the prefix that fits `largest`, and how a value in base units is written in it.

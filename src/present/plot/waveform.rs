@@ -11,7 +11,7 @@ use super::scale::Scale;
 use super::thd::SHEET;
 use super::transfer::prefixed;
 use crate::measure::report::{Conditions, DistortionPoint};
-use crate::present::format::{measured, stated};
+use crate::present::format::{measured, percent, stated};
 use crate::present::text::definition;
 use std::f64::consts::{SQRT_2, TAU};
 
@@ -92,9 +92,9 @@ fn check(point: &DistortionPoint) -> Result<(), PlotError> {
 }
 
 fn subject(point: &DistortionPoint) -> String {
-    let thd = point
-        .thd
-        .map_or_else(String::new, |thd| format!(", THD {:.4} %", 100.0 * thd));
+    let thd = point.thd.map_or_else(String::new, |thd| {
+        format!(", THD {} %", percent(thd, point.error_estimate))
+    });
     format!(
         "One period at {} and {} EMF rms{thd}",
         stated(point.frequency, "Hz"),
@@ -117,10 +117,7 @@ fn source(point: &DistortionPoint) -> (String, Vec<(f64, Option<f64>)>) {
         .collect();
     let times = measured(point.output / point.level, "");
     let inverted = if inverts { ", inverted" } else { "" };
-    (
-        format!("source EMF, {} times{inverted}", times.trim()),
-        points,
-    )
+    (format!("source EMF × {}{inverted}", times.trim()), points)
 }
 
 /// The samples of the output over one period, the first repeated at its end.
@@ -182,7 +179,7 @@ mod tests {
     fn the_source_is_turned_over_with_an_inverting_stage() {
         let point = sample::point(1000.0, 0.01);
         let (name, sine) = source(&point);
-        assert!(name.contains("34.25 times, inverted"), "{name}");
+        assert!(name.contains("× 34.25, inverted"), "{name}");
         assert!(sine[SINE / 4].1.unwrap() < 0.0);
     }
 
