@@ -136,5 +136,6 @@ fn nothing_is_printed_on_standard_output_when_there_is_no_answer() {
     for option in ["", "--json", "--csv"] {
         let run = bench.run(&format!("bias stage.toml {option}")).ends_with(2);
         assert!(run.stdout.is_empty(), "{:?}", run.stdout);
+        assert!(!run.stderr.is_empty(), "nothing said with {option:?}");
     }
 }

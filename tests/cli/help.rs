@@ -84,6 +84,7 @@ fn a_reader_that_has_gone_away_is_no_reason_to_panic() {
         "bias stage.toml --json",
         "distortion stage.toml --level 1mV..1V/20",
     ] {
+        bench.run(words).ends_with(0);
         bench.run_unread(words);
     }
 }
