@@ -183,7 +183,7 @@ fn distortion_csv_has_a_row_a_point() {
     let rows = run.rows();
     assert_eq!(rows.len(), 4);
     for name in ["frequency_hz", "level_v_rms", "thd_percent"] {
-        let column = rows[0].iter().position(|&c| c == name);
+        let column = rows[0].iter().position(|c| c == name);
         let column = column.unwrap_or_else(|| panic!("no column {name} in {:?}", rows[0]));
         assert!(
             rows[1..]

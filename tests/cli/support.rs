@@ -50,14 +50,10 @@ impl Run {
         document
     }
 
-    /// Standard output as CSV rows, the first being the header. No figure of this program holds a comma or a quote.
+    /// Standard output as CSV rows (RFC 4180, no line feeds in fields), the first being the header, all of one length.
     #[track_caller]
-    pub fn rows(&self) -> Vec<Vec<&str>> {
-        let rows: Vec<Vec<&str>> = self
-            .stdout
-            .lines()
-            .map(|l| l.split(',').collect())
-            .collect();
+    pub fn rows(&self) -> Vec<Vec<String>> {
+        let rows: Vec<Vec<String>> = self.stdout.lines().map(fields).collect();
         assert!(
             rows.len() > 1,
             "a header and at least one row:\n{}",
@@ -73,6 +69,22 @@ impl Run {
         }
         rows
     }
+}
+
+/// The fields of one CSV line; quotes hold commas together and a doubled quote is one.
+fn fields(line: &str) -> Vec<String> {
+    let (mut fields, mut quoted) = (vec![String::new()], false);
+    let mut rest = line.chars().peekable();
+    while let Some(c) = rest.next() {
+        let last = fields.len() - 1;
+        match c {
+            '"' if quoted && rest.peek() == Some(&'"') => fields[last].extend(rest.next()),
+            '"' => quoted = !quoted,
+            ',' if !quoted => fields.push(String::new()),
+            _ => fields[last].push(c),
+        }
+    }
+    fields
 }
 
 /// A temporary folder in which the program is run.
