@@ -6,11 +6,12 @@ use std::path::Path;
 
 use toml::de::DeTable;
 
+use super::check::{self, NetworkPlace};
 use super::description::Stage;
 use super::devices::Devices;
 use super::faults::{Caution, Faults, Lines, StageError};
 use super::table::{Fields, Reader};
-use super::{gang, parts, sections};
+use super::{cautions, gang, parts, sections};
 use crate::quantity::constants::REFERENCE_TEMPERATURE;
 use crate::quantity::{parse_temperature, quoted};
 
@@ -152,7 +153,7 @@ fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
     if let Some(fields) = &parts_section {
         gang::follow(reader, fields, &mut parts);
     }
-    Some(Stage {
+    let stage = Stage {
         title: title.unwrap_or_else(|| stem(file_name)),
         input: input?,
         output: output?,
@@ -164,7 +165,42 @@ fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
         nominal_input,
         targets,
         overrides: Vec::new(),
-    })
+    };
+    if reader.connections_known {
+        reader
+            .faults
+            .take_over(check::network_faults(&stage), |place| offset(file, place));
+    }
+    cautions::note(reader, file, &stage);
+    Some(stage)
+}
+
+/// Where in the file a place of the network stands.
+fn offset(file: &Fields, place: &NetworkPlace) -> usize {
+    let value = |key: &str| file.get(key).map_or(0, |entry| entry.at);
+    match place {
+        NetworkPlace::Input => value("input"),
+        NetworkPlace::Output => value("output"),
+        NetworkPlace::Rail(name) => key_in(file, "rails", name),
+        NetworkPlace::Part(name) => key_in(file, "parts", name),
+        NetworkPlace::Terminal { part, key, index } => {
+            terminal(file, part, key, *index).unwrap_or_else(|| key_in(file, "parts", part))
+        }
+    }
+}
+
+fn key_in(file: &Fields, section: &str, name: &str) -> usize {
+    let table = file.get(section).and_then(|entry| entry.value.as_table());
+    table
+        .and_then(|table| table.get_key_value(name))
+        .map_or(0, |(key, _)| key.span().start)
+}
+
+fn terminal(file: &Fields, part: &str, key: &str, index: usize) -> Option<usize> {
+    let parts = file.get("parts")?.value.as_table()?;
+    let node = parts.get(part)?.get_ref().as_table()?.get(key)?;
+    let pin = node.get_ref().as_array().and_then(|pins| pins.get(index));
+    Some(pin.unwrap_or(node).span().start)
 }
 
 fn stem(file_name: &str) -> String {

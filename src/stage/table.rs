@@ -13,7 +13,7 @@ use crate::quantity::{Unit, ValueError, engineering, quoted};
 /// What reading a file collects besides the stage.
 pub(super) struct Reader<'t> {
     pub(super) lines: Lines<'t>,
-    pub(super) faults: Faults,
+    pub(super) faults: Faults<usize>,
     pub(super) cautions: Vec<Caution>,
     /// Whether every connection of the circuit could be read; otherwise the network cannot be judged.
     pub(super) connections_known: bool,
@@ -37,6 +37,10 @@ impl Reader<'_> {
             line: self.lines.line(at),
             message,
         });
+    }
+
+    pub(super) fn caution_on_line(&mut self, line: usize, message: String) {
+        self.cautions.push(Caution { line, message });
     }
 
     /// A fault after which the network cannot be judged.
