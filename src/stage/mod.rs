@@ -8,9 +8,11 @@ mod faults;
 mod gang;
 mod groups;
 mod names;
+mod overrides;
 mod parts;
 mod read;
 mod sections;
+mod settings;
 mod table;
 mod terminals;
 
@@ -18,4 +20,5 @@ pub use check::{NetworkFault, NetworkPlace};
 pub use description::*;
 pub use faults::{Caution, Fault, StageError};
 pub use names::nearest;
+pub use overrides::{Override, OverrideError};
 pub use terminals::Terminal;

@@ -304,22 +304,19 @@ fn potentiometer(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
 }
 
 fn law(reader: &mut Reader, fields: &Fields) -> TrackLaw {
-    match fields.string(reader, "law") {
-        Given::Missing | Given::Faulty => TrackLaw::Linear,
-        Given::Value(("linear", _)) => TrackLaw::Linear,
-        Given::Value(("audio", _)) => TrackLaw::Audio,
-        Given::Value(("reverse-audio", _)) => TrackLaw::ReverseAudio,
-        Given::Value((other, at)) => {
-            reader.fault(at, || {
-                format!(
-                    "{}law is {}, must be linear, audio or reverse-audio",
-                    fields.prefix(),
-                    quoted(other)
-                )
-            });
-            TrackLaw::Linear
-        }
-    }
+    let Given::Value((name, at)) = fields.string(reader, "law") else {
+        return TrackLaw::Linear;
+    };
+    TrackLaw::of_name(name).unwrap_or_else(|| {
+        reader.fault(at, || {
+            format!(
+                "{}law is {}, must be linear, audio or reverse-audio",
+                fields.prefix(),
+                quoted(name)
+            )
+        });
+        TrackLaw::Linear
+    })
 }
 
 fn current_source(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
