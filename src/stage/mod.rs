@@ -13,6 +13,7 @@ mod parts;
 mod read;
 mod sections;
 mod settings;
+pub mod starters;
 mod table;
 mod terminals;
 

@@ -49,7 +49,8 @@ pub(super) fn check_designator(name: &str) -> Result<(), String> {
     Ok(())
 }
 
-/// The candidate most like `name`, where one is near enough to be meant.
+/// The candidate most like `name`, where one is near enough to be meant; of equals the first of the alphabet, so that a
+/// message does not depend on the order of the candidates.
 pub fn nearest<'c>(name: &str, candidates: impl IntoIterator<Item = &'c str>) -> Option<&'c str> {
     let length = name.chars().count();
     if length > LONGEST {
@@ -69,7 +70,7 @@ pub fn nearest<'c>(name: &str, candidates: impl IntoIterator<Item = &'c str>) ->
             )
         })
         .filter(|(distance, _)| *distance <= limit)
-        .min_by_key(|(distance, _)| *distance)
+        .min_by_key(|(distance, candidate)| (*distance, *candidate))
         .map(|(_, candidate)| candidate)
 }
 

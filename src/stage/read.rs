@@ -109,13 +109,23 @@ fn reason(error: &std::io::Error) -> String {
 fn note_syntax_errors(reader: &mut Reader, errors: &[toml::de::Error]) {
     for error in errors {
         let at = error.span().map_or(0, |span| span.start);
-        reader
-            .faults
-            .add(at, || format!("not TOML: {}", error.message()));
+        reader.faults.add(at, || syntax_message(error));
         reader.broken_lines.push(reader.lines.line(at));
         reader.connections_known = false;
     }
     reader.broken_lines.sort_unstable();
+}
+
+/// The parser's words, and what they mean here where it is the slip everyone makes.
+fn syntax_message(error: &toml::de::Error) -> String {
+    let message = error.message();
+    if message.starts_with("string values must be quoted") {
+        return "not TOML: a value with letters needs quotes, such as \"4k7\"".to_owned();
+    }
+    if message == "duplicate key" {
+        return "this name stands here a second time; names and keys must differ".to_owned();
+    }
+    format!("not TOML: {message}")
 }
 
 fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
