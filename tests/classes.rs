@@ -11,16 +11,16 @@ use cleanswing::quantity::constants::{BOLTZMANN, ELEMENTARY_CHARGE, thermal_volt
 const ROOM: f64 = 298.15;
 
 fn transistor(name: &str) -> TransistorParameters {
-    match &classes::find(name).unwrap().parameters {
-        ClassParameters::Transistor(_, set) => (**set).clone(),
-        ClassParameters::Diode(_) => panic!("{name} is a diode"),
+    match classes::find(name).map(|class| &class.parameters) {
+        Some(ClassParameters::Transistor(_, set)) => (**set).clone(),
+        other => panic!("{name} is {other:?}"),
     }
 }
 
 fn diode(name: &str) -> DiodeParameters {
-    match &classes::find(name).unwrap().parameters {
-        ClassParameters::Diode(set) => (**set).clone(),
-        ClassParameters::Transistor(..) => panic!("{name} is a transistor"),
+    match classes::find(name).map(|class| &class.parameters) {
+        Some(ClassParameters::Diode(set)) => (**set).clone(),
+        other => panic!("{name} is {other:?}"),
     }
 }
 

@@ -107,7 +107,7 @@ fn one_fault_gives_one_message_at_its_place() {
         (
             "tolerance = ",
             "tolerence = ",
-            "12:51: R1: unknown key \"tolerence\"; did you mean \"tolerance\"?",
+            "12:50: R1: unknown key \"tolerence\"; did you mean \"tolerance\"?",
         ),
         (
             "R2 = { resistor",
@@ -125,8 +125,8 @@ fn one_fault_gives_one_message_at_its_place() {
             "30:1: [ratings.Q1]: unknown key \"colector_current\"; did you mean \"collector_current\"?",
         ),
         (
-            "resistance = \"1\" }",
-            "resistanse = \"1\" }",
+            "volts = \"12\", resistance",
+            "volts = \"12\", resistanse",
             "10:23: vcc: unknown key \"resistanse\"; did you mean \"resistance\"?",
         ),
         (
@@ -239,17 +239,17 @@ fn one_fault_gives_one_message_at_its_place() {
         (
             "tolerance = \"5%\"",
             "tolerance = \"500%\"",
-            "12:63: R1: tolerance is 500 %, must be below 100 %; write 5 percent as \"5%\"",
+            "12:62: R1: tolerance is 500 %, must be below 100 %; write 5 percent as \"5%\"",
         ),
         (
             "turn = 0.5",
             "turn = 1.5",
-            "19:94: P1: turn is 1.5, must be from 0 to 1",
+            "19:95: P1: turn is 1.5, must be from 0 to 1",
         ),
         (
             "turn = 0.5",
             "law = \"log\", turn = 0.5",
-            "19:93: P1: law is \"log\", must be linear, audio or reverse-audio",
+            "19:94: P1: law is \"log\", must be linear, audio or reverse-audio",
         ),
         (
             "forward_gain = 300",
@@ -300,7 +300,7 @@ fn one_fault_gives_one_message_at_its_place() {
         (
             "emitter = \"emit\" }",
             "emiter = \"emit\" }",
-            "23:61: Q1: unknown key \"emiter\"; did you mean \"emitter\"?",
+            "23:57: Q1: unknown key \"emiter\"; did you mean \"emitter\"?",
         ),
         (
             "plus = \"base\", minus",
@@ -315,17 +315,17 @@ fn one_fault_gives_one_message_at_its_place() {
         (
             "turn = 0.5",
             "gang = \"P2\"",
-            "19:93: P1: gang names no part \"P2\"; did you mean \"P1\"?",
+            "19:95: P1: gang names no part \"P2\"; did you mean \"P1\"?",
         ),
         (
             "turn = 0.5",
             "gang = \"R1\"",
-            "19:93: P1: gang names \"R1\", which is no potentiometer",
+            "19:95: P1: gang names \"R1\", which is no potentiometer",
         ),
         (
             "turn = 0.5",
             "gang = \"P1\"",
-            "19:93: P1: gang leads back to \"P1\" itself",
+            "19:95: P1: gang leads back to \"P1\" itself",
         ),
         (
             ", turn = 0.5",
@@ -382,7 +382,7 @@ fn one_fault_gives_one_message_at_its_place() {
         (
             "collector = \"coll\"",
             "collector = \"colt\"",
-            "23:35: Q1: collector node \"colt\" has no other connection; did you mean \"coll\"?",
+            "23:34: Q1: collector node \"colt\" has no other connection; did you mean \"coll\"?",
         ),
         ("R1 = { resistor", "R1 = { fitted = false, resistor", ""),
         ("resistance = \"6k\"", "resistance = \"0\"", ""),
@@ -395,8 +395,7 @@ fn one_fault_gives_one_message_at_its_place() {
         }
         let found = spoiled(from, to);
         let expected = vec![message.to_owned()];
-        // A misspelt key may leave the key itself missing: the first message is the cause.
-        assert_eq!(found[..1], expected[..], "{to}\nall: {found:#?}");
+        assert_eq!(found, expected, "{to}");
     }
 }
 
@@ -406,14 +405,17 @@ fn all_faults_are_told_at_once_in_file_order() {
         .replace("temperature = \"25C\"", "temperature = \"hot\"")
         .replace("resistor = \"18k\"", "resistor = \"0\"")
         .replace("collector = \"coll\"", "collector = \"colt\"")
-        .replace("resistance = \"1\" }", "resistance = \"-1\" }");
+        .replace(
+            "\"12\", resistance = \"1\" }",
+            "\"12\", resistance = \"-1\" }",
+        );
     assert_eq!(
         messages(&text),
         [
             "4:15: temperature \"hot\" is not a temperature such as 25C, -10C or 298.15K",
             "10:36: vcc: resistance is -1, must be 0 Ω or above",
             "13:19: R2: resistor is 0, must be above 0 Ω",
-            "23:35: Q1: collector node \"colt\" has no other connection; did you mean \"coll\"?",
+            "23:34: Q1: collector node \"colt\" has no other connection; did you mean \"coll\"?",
         ]
     );
 }
@@ -470,7 +472,7 @@ C2 = { capacitor = 1, pins = [\"b\", \"gnd\"] }";
     assert_eq!(
         messages(&small(parts)),
         [
-            "7:38: nodes \"a\", \"b\" have no DC path to gnd; capacitors and current sources are none"
+            "7:41: nodes \"a\", \"b\" have no DC path to gnd; capacitors and current sources are none"
         ]
     );
 }
@@ -484,8 +486,8 @@ Q2 = { npn = \"npn-small-signal\", collector = \"out\", base = \"b\", emitter = 
     assert_eq!(
         messages(&small(coupled)),
         [
-            "8:61: Q1: nothing biases base node \"b\"; connect a resistor to it",
-            "9:61: Q2: nothing biases base node \"b\"; connect a resistor to it"
+            "8:60: Q1: nothing biases base node \"b\"; connect a resistor to it",
+            "9:60: Q2: nothing biases base node \"b\"; connect a resistor to it"
         ]
     );
     for bias in [

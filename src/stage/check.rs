@@ -58,8 +58,8 @@ impl Stage {
 pub(super) fn network_faults(stage: &Stage) -> Faults<NetworkPlace> {
     let mut network = Network::of(stage);
     let mut faults = Faults::default();
-    network.check_ends(&mut faults);
-    let dangling = network.check_dangling(&mut faults);
+    let meant = network.check_ends(&mut faults);
+    let dangling = network.check_dangling(&mut faults, &meant);
     network.check_dc_paths(&mut faults, &dangling);
     network.check_bases(&mut faults);
     network.check_loops(&mut faults);
@@ -154,8 +154,9 @@ impl<'s> Network<'s> {
         groups
     }
 
-    /// Input and output must be nodes of the circuit, and not `gnd`.
-    fn check_ends(&self, faults: &mut Faults<NetworkPlace>) {
+    /// Input and output must be nodes of the circuit, and not `gnd`. Returns the nodes that were probably meant.
+    fn check_ends(&self, faults: &mut Faults<NetworkPlace>) -> Vec<usize> {
+        let mut meant = Vec::new();
         let mut on_network = vec![false; self.nodes.len()];
         for rail in &self.stage.rails {
             on_network[self.numbers[rail.name.as_str()]] = true;
@@ -184,8 +185,12 @@ impl<'s> Network<'s> {
                     .zip(&on_network)
                     .filter(|(_, on)| **on)
                     .map(|(node, _)| *node);
+                let near = names::nearest(self.nodes[node], candidates);
+                meant.extend(near.map(|near| self.numbers[near]));
+                let hint = near
+                    .map(|near| format!("; did you mean {}?", quoted(near)))
+                    .unwrap_or_default();
                 faults.add(place, || {
-                    let hint = names::hint(self.nodes[node], candidates);
                     format!(
                         "{key} node {} is not on the network{hint}",
                         quoted(self.nodes[node])
@@ -193,17 +198,18 @@ impl<'s> Network<'s> {
                 });
             }
         }
+        meant
     }
 
-    /// A pin no other part touches is a slip of the pen. A part left out still marks where its pins belong.
-    fn check_dangling(&self, faults: &mut Faults<NetworkPlace>) -> Vec<bool> {
+    /// Returns the nodes that have their message already. A pin no other part touches is a slip of the pen. A part left out still marks where its pins belong.
+    fn check_dangling(&self, faults: &mut Faults<NetworkPlace>, meant: &[usize]) -> Vec<bool> {
         let mut first: Vec<Option<usize>> = vec![None; self.nodes.len()];
         let mut shared = vec![false; self.nodes.len()];
         for rail in &self.stage.rails {
             shared[self.numbers[rail.name.as_str()]] = true;
         }
-        for node in [GND, self.input(), self.output()] {
-            shared[node] = true;
+        for node in [GND, self.input(), self.output()].iter().chain(meant) {
+            shared[*node] = true;
         }
         for (index, terminals) in self.terminals.iter().enumerate() {
             for (_, node) in terminals {
@@ -213,6 +219,7 @@ impl<'s> Network<'s> {
         }
         let lone = |node: usize, part: &Part| !shared[node] && part.condition != Condition::Open;
         let mut dangling = vec![false; self.nodes.len()];
+        meant.iter().for_each(|node| dangling[*node] = true);
         for (part, terminals) in self.parts() {
             for (terminal, node) in terminals.iter().filter(|(_, node)| lone(*node, part)) {
                 if !std::mem::replace(&mut dangling[*node], true) {

@@ -272,7 +272,7 @@ fn potentiometer(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
         .string(reader, "gang")
         .value()
         .map(|(name, _)| name.to_owned());
-    if turn == Given::Missing && gang.is_none() {
+    if turn == Given::Missing && gang.is_none() && !fields.misspells("turn") {
         reader.fault(fields.at, || {
             format!(
                 "{}turn is missing; needs 0 (anticlockwise) to 1, or gang",
@@ -405,7 +405,11 @@ fn transistor(
 
 fn pins(reader: &mut Reader, fields: &Fields) -> Option<[String; 2]> {
     let Some(entry) = fields.get("pins") else {
-        reader.connection_fault(fields.at, || {
+        reader.connections_known = false;
+        if fields.misspells("pins") {
+            return None;
+        }
+        reader.fault(fields.at, || {
             format!(
                 "{}pins is missing; needs two node names such as [\"in\", \"base\"]",
                 fields.prefix()

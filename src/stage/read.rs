@@ -150,13 +150,18 @@ fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
     let parts_section = file
         .get("parts")
         .and_then(|entry| Fields::of(reader, "[parts]", entry));
-    if !file.has("parts") {
+    if !file.has("parts") && !file.misspells("parts") {
         reader.fault(0, || "[parts] is missing; a stage needs parts".to_owned());
     }
     let mut parts = parts_section
         .as_ref()
         .map_or_else(Vec::new, |fields| parts::read(reader, fields, &devices));
-    sections::ratings(reader, file.get("ratings"), &mut parts);
+    let part_names: Vec<&str> = parts_section
+        .iter()
+        .flat_map(|fields| &fields.entries)
+        .map(|entry| entry.key)
+        .collect();
+    sections::ratings(reader, file.get("ratings"), &part_names, &mut parts);
     let nominal_input = sections::nominal(reader, file.get("nominal"));
     let targets = sections::targets(reader, file.get("targets"));
     refuse_shared_names(reader, file);

@@ -188,6 +188,13 @@ impl<'a, 't> Fields<'a, 't> {
         self.get(key).is_some()
     }
 
+    /// Whether another key looks like `key`: its own message names the slip, and nothing is missing besides.
+    pub(super) fn misspells(&self, key: &str) -> bool {
+        self.entries
+            .iter()
+            .any(|entry| names::nearest(entry.key, [key]).is_some())
+    }
+
     /// `R1: ` or nothing for the whole file.
     pub(super) fn prefix(&self) -> String {
         if self.owner.is_empty() {
@@ -287,7 +294,7 @@ impl<'a, 't> Fields<'a, 't> {
     /// As `quantity`, where the key must be there; 1 stands in for a fault.
     pub(super) fn required(&self, reader: &mut Reader, key: &str, unit: Unit, range: Range) -> f64 {
         let given = self.quantity(reader, key, unit, range);
-        if given == Given::Missing {
+        if given == Given::Missing && !self.misspells(key) {
             reader.fault(self.at, || {
                 format!("{}{key} is missing; needs {}", self.prefix(), unit.wanted())
             });
@@ -339,9 +346,12 @@ impl<'a, 't> Fields<'a, 't> {
         match self.string(reader, key) {
             Given::Value((name, at)) => self.node_name(reader, key, name, at),
             Given::Missing => {
-                reader.connection_fault(self.at, || {
-                    format!("{}{key} is missing; needs a node name", self.prefix())
-                });
+                reader.connections_known = false;
+                if !self.misspells(key) {
+                    reader.fault(self.at, || {
+                        format!("{}{key} is missing; needs a node name", self.prefix())
+                    });
+                }
                 None
             }
             Given::Faulty => {
