@@ -202,6 +202,18 @@ pub enum TrackLaw {
     ReverseAudio,
 }
 
+impl TrackLaw {
+    /// The law of that name in a stage file: `linear`, `audio`, `reverse-audio`.
+    pub fn of_name(name: &str) -> Option<TrackLaw> {
+        match name {
+            "linear" => Some(TrackLaw::Linear),
+            "audio" => Some(TrackLaw::Audio),
+            "reverse-audio" => Some(TrackLaw::ReverseAudio),
+            _ => None,
+        }
+    }
+}
+
 /// One entry of `[targets]`.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Target {

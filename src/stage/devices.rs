@@ -309,10 +309,10 @@ fn resolve(
         let diode = diodes.get(current).copied().unwrap_or(false);
         let device = complete(
             reader,
-            &tables[current],
+            tables,
+            current,
             diode,
             uses.contains_key(current),
-            current,
             done,
         );
         done.insert(current.to_owned(), device);
@@ -322,24 +322,24 @@ fn resolve(
 /// The class of one table, its base being complete.
 fn complete(
     reader: &mut Reader,
-    fields: &Fields,
+    tables: &Tables,
+    name: &str,
     diode: bool,
     used: bool,
-    name: &str,
     done: &HashMap<String, Device>,
 ) -> Device {
-    let mut device = match fields.string(reader, "like") {
-        Given::Value((base, at)) => {
-            base_of(reader, fields, base, at, name, done).unwrap_or_else(|| Device::blank(diode))
-        }
-        Given::Faulty => Device::blank(diode),
+    let fields = &tables[name];
+    let base = match fields.string(reader, "like") {
+        Given::Value((base, at)) => base_of(reader, fields, base, at, tables, done),
+        Given::Faulty => None,
         Given::Missing => {
             if used {
                 refuse_missing(reader, fields, diode);
             }
-            Device::blank(diode)
+            None
         }
     };
+    let mut device = base.unwrap_or_else(|| Device::blank(diode));
     read_parameters(reader, fields, &mut device);
     device
 }
@@ -349,26 +349,18 @@ fn base_of(
     fields: &Fields,
     base: &str,
     at: usize,
-    name: &str,
+    tables: &Tables,
     done: &HashMap<String, Device>,
 ) -> Option<Device> {
     let own = done.get(base).cloned();
     let found = own.or_else(|| classes::find(base).map(Device::built_in));
-    // A circle has its own message.
-    if found.is_none() && base != name {
+    // A base that is in the file and not complete closes a circle, which has its own message.
+    if found.is_none() && !tables.contains_key(base) {
         let built_in = classes::all().iter().map(|class| class.name.as_str());
-        let known = |at: &str| done.contains_key(at);
-        if !known(base) {
-            let candidates: Vec<&str> = done.keys().map(String::as_str).chain(built_in).collect();
-            reader.fault(at, || {
-                format!(
-                    "{}unknown device {}{}",
-                    fields.prefix(),
-                    quoted(base),
-                    names::hint(base, candidates)
-                )
-            });
-        }
+        reader.fault(at, || {
+            let hint = names::hint(base, tables.keys().copied().chain(built_in));
+            format!("{}unknown device {}{hint}", fields.prefix(), quoted(base))
+        });
     }
     found
 }

@@ -79,15 +79,24 @@ impl fmt::Display for StageError {
 
 impl std::error::Error for StageError {}
 
-/// Collects faults by byte offset; builds no message beyond the limit, so that a hostile file costs little.
-#[derive(Debug, Default)]
-pub(super) struct Faults {
-    found: Vec<(usize, String)>,
+/// Collects faults by their place; builds no message beyond the limit, so that a hostile file costs little.
+#[derive(Debug)]
+pub(super) struct Faults<P> {
+    found: Vec<(P, String)>,
     more: usize,
 }
 
-impl Faults {
-    pub(super) fn add(&mut self, at: usize, message: impl FnOnce() -> String) {
+impl<P> Default for Faults<P> {
+    fn default() -> Self {
+        Faults {
+            found: Vec::new(),
+            more: 0,
+        }
+    }
+}
+
+impl<P> Faults<P> {
+    pub(super) fn add(&mut self, at: P, message: impl FnOnce() -> String) {
         if self.found.len() < MOST_FAULTS {
             self.found.push((at, message()));
         } else {
@@ -99,6 +108,20 @@ impl Faults {
         self.found.is_empty()
     }
 
+    pub(super) fn into_found(self) -> impl Iterator<Item = (P, String)> {
+        self.found.into_iter()
+    }
+
+    /// Takes over the faults of another collection, each at the place `at` gives.
+    pub(super) fn take_over<Q>(&mut self, other: Faults<Q>, at: impl Fn(&Q) -> P) {
+        self.more += other.more;
+        for (place, message) in other.found {
+            self.add(at(&place), || message);
+        }
+    }
+}
+
+impl Faults<usize> {
     /// The error of all faults, in file order.
     pub(super) fn into_error(mut self, file: &str, lines: &Lines) -> StageError {
         self.found.sort_by_key(|(at, _)| *at);

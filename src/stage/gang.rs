@@ -51,6 +51,10 @@ fn gang_of(part: &Part) -> Option<&str> {
     }
 }
 
+fn is_track(part: &Part) -> bool {
+    matches!(part.kind, PartKind::Potentiometer { .. })
+}
+
 /// The most potentiometers on one spindle, one behind the other; more is a circle or a joke.
 const LONGEST: usize = 64;
 
@@ -69,7 +73,13 @@ fn leader(parts: &[Part], index: &HashMap<&str, usize>, start: usize) -> Result<
             format!(
                 "names no part {}{}",
                 quoted(next),
-                names::hint(next, index.keys().copied())
+                names::hint(
+                    next,
+                    parts
+                        .iter()
+                        .filter(|part| is_track(part))
+                        .map(|part| part.name.as_str())
+                )
             )
         })?;
     }

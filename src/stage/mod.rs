@@ -1,15 +1,25 @@
 //! The checked description of a stage, with the same names as the keys of its file.
 
+mod cautions;
+mod check;
 mod description;
 mod devices;
 mod faults;
 mod gang;
+mod groups;
 mod names;
+mod overrides;
 mod parts;
 mod read;
 mod sections;
+mod settings;
+pub mod starters;
 mod table;
+mod terminals;
 
+pub use check::{NetworkFault, NetworkPlace};
 pub use description::*;
 pub use faults::{Caution, Fault, StageError};
 pub use names::nearest;
+pub use overrides::{Override, OverrideError};
+pub use terminals::Terminal;

@@ -49,7 +49,8 @@ pub(super) fn check_designator(name: &str) -> Result<(), String> {
     Ok(())
 }
 
-/// The candidate most like `name`, where one is near enough to be meant.
+/// The candidate most like `name`, where one is near enough to be meant; of equals one with the same first
+/// letter (Q2 means Q1 sooner than R2), then the first of the alphabet, so that the candidates' order does not matter.
 pub fn nearest<'c>(name: &str, candidates: impl IntoIterator<Item = &'c str>) -> Option<&'c str> {
     let length = name.chars().count();
     if length > LONGEST {
@@ -58,19 +59,16 @@ pub fn nearest<'c>(name: &str, candidates: impl IntoIterator<Item = &'c str>) ->
     // A third of the letters may differ; at least one, so that R1 suggests R2 but not C7.
     let limit = (length / 3).max(1);
     let lower = name.to_lowercase();
+    let distance = |candidate: &str| strsim::osa_distance(&lower, &candidate.to_lowercase());
+    let same_first = |candidate: &str| candidate.chars().next() == name.chars().next();
     candidates
         .into_iter()
         .filter(|candidate| *candidate != name && candidate.len() <= 4 * LONGEST)
         .filter(|candidate| candidate.chars().count().abs_diff(length) <= limit)
-        .map(|candidate| {
-            (
-                strsim::osa_distance(&lower, &candidate.to_lowercase()),
-                candidate,
-            )
-        })
-        .filter(|(distance, _)| *distance <= limit)
-        .min_by_key(|(distance, _)| *distance)
-        .map(|(_, candidate)| candidate)
+        .map(|candidate| (distance(candidate), !same_first(candidate), candidate))
+        .filter(|(distance, ..)| *distance <= limit)
+        .min()
+        .map(|(.., candidate)| candidate)
 }
 
 /// `; did you mean "x"?`, or nothing.

@@ -272,7 +272,7 @@ fn potentiometer(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
         .string(reader, "gang")
         .value()
         .map(|(name, _)| name.to_owned());
-    if turn == Given::Missing && gang.is_none() {
+    if turn == Given::Missing && gang.is_none() && !fields.misspells("turn") {
         reader.fault(fields.at, || {
             format!(
                 "{}turn is missing; needs 0 (anticlockwise) to 1, or gang",
@@ -304,22 +304,19 @@ fn potentiometer(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
 }
 
 fn law(reader: &mut Reader, fields: &Fields) -> TrackLaw {
-    match fields.string(reader, "law") {
-        Given::Missing | Given::Faulty => TrackLaw::Linear,
-        Given::Value(("linear", _)) => TrackLaw::Linear,
-        Given::Value(("audio", _)) => TrackLaw::Audio,
-        Given::Value(("reverse-audio", _)) => TrackLaw::ReverseAudio,
-        Given::Value((other, at)) => {
-            reader.fault(at, || {
-                format!(
-                    "{}law is {}, must be linear, audio or reverse-audio",
-                    fields.prefix(),
-                    quoted(other)
-                )
-            });
-            TrackLaw::Linear
-        }
-    }
+    let Given::Value((name, at)) = fields.string(reader, "law") else {
+        return TrackLaw::Linear;
+    };
+    TrackLaw::of_name(name).unwrap_or_else(|| {
+        reader.fault(at, || {
+            format!(
+                "{}law is {}, must be linear, audio or reverse-audio",
+                fields.prefix(),
+                quoted(name)
+            )
+        });
+        TrackLaw::Linear
+    })
 }
 
 fn current_source(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
@@ -408,7 +405,11 @@ fn transistor(
 
 fn pins(reader: &mut Reader, fields: &Fields) -> Option<[String; 2]> {
     let Some(entry) = fields.get("pins") else {
-        reader.connection_fault(fields.at, || {
+        reader.connections_known = false;
+        if fields.misspells("pins") {
+            return None;
+        }
+        reader.fault(fields.at, || {
             format!(
                 "{}pins is missing; needs two node names such as [\"in\", \"base\"]",
                 fields.prefix()

@@ -6,11 +6,12 @@ use std::path::Path;
 
 use toml::de::DeTable;
 
+use super::check::{self, NetworkPlace};
 use super::description::Stage;
 use super::devices::Devices;
 use super::faults::{Caution, Faults, Lines, StageError};
 use super::table::{Fields, Reader};
-use super::{gang, parts, sections};
+use super::{cautions, gang, parts, sections};
 use crate::quantity::constants::REFERENCE_TEMPERATURE;
 use crate::quantity::{parse_temperature, quoted};
 
@@ -108,13 +109,23 @@ fn reason(error: &std::io::Error) -> String {
 fn note_syntax_errors(reader: &mut Reader, errors: &[toml::de::Error]) {
     for error in errors {
         let at = error.span().map_or(0, |span| span.start);
-        reader
-            .faults
-            .add(at, || format!("not TOML: {}", error.message()));
+        reader.faults.add(at, || syntax_message(error));
         reader.broken_lines.push(reader.lines.line(at));
         reader.connections_known = false;
     }
     reader.broken_lines.sort_unstable();
+}
+
+/// The parser's words, and what they mean here where it is the slip everyone makes.
+fn syntax_message(error: &toml::de::Error) -> String {
+    let message = error.message();
+    if message.starts_with("string values must be quoted") {
+        return "not TOML: a value with letters needs quotes, such as \"4k7\"".to_owned();
+    }
+    if message == "duplicate key" {
+        return "this name stands here a second time; names and keys must differ".to_owned();
+    }
+    format!("not TOML: {message}")
 }
 
 fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
@@ -139,20 +150,25 @@ fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
     let parts_section = file
         .get("parts")
         .and_then(|entry| Fields::of(reader, "[parts]", entry));
-    if !file.has("parts") {
+    if !file.has("parts") && !file.misspells("parts") {
         reader.fault(0, || "[parts] is missing; a stage needs parts".to_owned());
     }
     let mut parts = parts_section
         .as_ref()
         .map_or_else(Vec::new, |fields| parts::read(reader, fields, &devices));
-    sections::ratings(reader, file.get("ratings"), &mut parts);
+    let part_names: Vec<&str> = parts_section
+        .iter()
+        .flat_map(|fields| &fields.entries)
+        .map(|entry| entry.key)
+        .collect();
+    sections::ratings(reader, file.get("ratings"), &part_names, &mut parts);
     let nominal_input = sections::nominal(reader, file.get("nominal"));
     let targets = sections::targets(reader, file.get("targets"));
     refuse_shared_names(reader, file);
     if let Some(fields) = &parts_section {
         gang::follow(reader, fields, &mut parts);
     }
-    Some(Stage {
+    let stage = Stage {
         title: title.unwrap_or_else(|| stem(file_name)),
         input: input?,
         output: output?,
@@ -164,7 +180,42 @@ fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
         nominal_input,
         targets,
         overrides: Vec::new(),
-    })
+    };
+    if reader.connections_known {
+        reader
+            .faults
+            .take_over(check::network_faults(&stage), |place| offset(file, place));
+    }
+    cautions::note(reader, file, &stage);
+    Some(stage)
+}
+
+/// Where in the file a place of the network stands.
+fn offset(file: &Fields, place: &NetworkPlace) -> usize {
+    let value = |key: &str| file.get(key).map_or(0, |entry| entry.at);
+    match place {
+        NetworkPlace::Input => value("input"),
+        NetworkPlace::Output => value("output"),
+        NetworkPlace::Rail(name) => key_in(file, "rails", name),
+        NetworkPlace::Part(name) => key_in(file, "parts", name),
+        NetworkPlace::Terminal { part, key, index } => {
+            terminal(file, part, key, *index).unwrap_or_else(|| key_in(file, "parts", part))
+        }
+    }
+}
+
+fn key_in(file: &Fields, section: &str, name: &str) -> usize {
+    let table = file.get(section).and_then(|entry| entry.value.as_table());
+    table
+        .and_then(|table| table.get_key_value(name))
+        .map_or(0, |(key, _)| key.span().start)
+}
+
+fn terminal(file: &Fields, part: &str, key: &str, index: usize) -> Option<usize> {
+    let parts = file.get("parts")?.value.as_table()?;
+    let node = parts.get(part)?.get_ref().as_table()?.get(key)?;
+    let pin = node.get_ref().as_array().and_then(|pins| pins.get(index));
+    Some(pin.unwrap_or(node).span().start)
 }
 
 fn stem(file_name: &str) -> String {

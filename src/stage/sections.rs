@@ -1,6 +1,6 @@
 //! `[source]`, `[load]`, `[rails]`, `[nominal]`, `[ratings]` and `[targets]`.
 
-use std::collections::HashMap;
+use std::collections::{HashMap, HashSet};
 
 use super::description::{Load, Part, PartKind, Rail, Source, Target, TargetEntry};
 use super::names;
@@ -123,22 +123,30 @@ pub(super) fn nominal(reader: &mut Reader, section: Option<&Entry>) -> Option<f6
     }
 }
 
-/// `[ratings.NAME]`, put over what the part has from its device.
-pub(super) fn ratings(reader: &mut Reader, section: Option<&Entry>, parts: &mut [Part]) {
+/// `[ratings.NAME]`, put over what the part has from its device. `names` are those of every part, faulty ones too.
+pub(super) fn ratings(
+    reader: &mut Reader,
+    section: Option<&Entry>,
+    names: &[&str],
+    parts: &mut [Part],
+) {
     let Some(fields) = section.and_then(|entry| Fields::of(reader, "[ratings]", entry)) else {
         return;
     };
+    let known: HashSet<&str> = names.iter().copied().collect();
     let index: HashMap<String, usize> = parts
         .iter()
         .enumerate()
         .map(|(i, part)| (part.name.clone(), i))
         .collect();
     for entry in &fields.entries {
-        let Some(part) = index.get(entry.key) else {
+        if !known.contains(entry.key) {
             reader.fault(entry.key_at, || {
-                let hint = names::hint(entry.key, index.keys().map(String::as_str));
+                let hint = names::hint(entry.key, known.iter().copied());
                 format!("[ratings]: no part {}{hint}", quoted(entry.key))
             });
+        }
+        let Some(part) = index.get(entry.key) else {
             continue;
         };
         let owner = format!("[ratings.{}]", entry.key);

@@ -13,7 +13,7 @@ use crate::quantity::{Unit, ValueError, engineering, quoted};
 /// What reading a file collects besides the stage.
 pub(super) struct Reader<'t> {
     pub(super) lines: Lines<'t>,
-    pub(super) faults: Faults,
+    pub(super) faults: Faults<usize>,
     pub(super) cautions: Vec<Caution>,
     /// Whether every connection of the circuit could be read; otherwise the network cannot be judged.
     pub(super) connections_known: bool,
@@ -37,6 +37,10 @@ impl Reader<'_> {
             line: self.lines.line(at),
             message,
         });
+    }
+
+    pub(super) fn caution_on_line(&mut self, line: usize, message: String) {
+        self.cautions.push(Caution { line, message });
     }
 
     /// A fault after which the network cannot be judged.
@@ -184,6 +188,13 @@ impl<'a, 't> Fields<'a, 't> {
         self.get(key).is_some()
     }
 
+    /// Whether another key looks like `key`: its own message names the slip, and nothing is missing besides.
+    pub(super) fn misspells(&self, key: &str) -> bool {
+        self.entries
+            .iter()
+            .any(|entry| names::nearest(entry.key, [key]).is_some())
+    }
+
     /// `R1: ` or nothing for the whole file.
     pub(super) fn prefix(&self) -> String {
         if self.owner.is_empty() {
@@ -283,7 +294,7 @@ impl<'a, 't> Fields<'a, 't> {
     /// As `quantity`, where the key must be there; 1 stands in for a fault.
     pub(super) fn required(&self, reader: &mut Reader, key: &str, unit: Unit, range: Range) -> f64 {
         let given = self.quantity(reader, key, unit, range);
-        if given == Given::Missing {
+        if given == Given::Missing && !self.misspells(key) {
             reader.fault(self.at, || {
                 format!("{}{key} is missing; needs {}", self.prefix(), unit.wanted())
             });
@@ -335,9 +346,12 @@ impl<'a, 't> Fields<'a, 't> {
         match self.string(reader, key) {
             Given::Value((name, at)) => self.node_name(reader, key, name, at),
             Given::Missing => {
-                reader.connection_fault(self.at, || {
-                    format!("{}{key} is missing; needs a node name", self.prefix())
-                });
+                reader.connections_known = false;
+                if !self.misspells(key) {
+                    reader.fault(self.at, || {
+                        format!("{}{key} is missing; needs a node name", self.prefix())
+                    });
+                }
                 None
             }
             Given::Faulty => {
