@@ -57,6 +57,8 @@ pub(super) fn bias() -> BiasReport {
             power: 0.0145236,
         }],
         static_swing: StaticSwing {
+            up_emf: None,
+            down_emf: None,
             up: Some(4.3127),
             down: Some(5.4403),
             up_limited_by: Some(("Q1".into(), Region::Cutoff)),
@@ -121,6 +123,8 @@ pub(super) fn point(frequency: f64, level: f64) -> DistortionPoint {
         dc_shift: waveform.iter().sum::<f64>() / PERIOD as f64,
         harmonics,
         error_estimate: 1e-9,
+        samples: 396,
+        beyond_early_range: false,
         waveform,
     }
 }
@@ -202,6 +206,8 @@ pub(super) fn short() -> DistortionReport {
                 harmonic(3, 1e-17, None, None),
             ],
             error_estimate: 1e-8,
+            samples: 396,
+            beyond_early_range: false,
             waveform: vec![],
         }],
         cautions: vec![],

@@ -157,6 +157,8 @@ mod tests {
         report.transistors.clear();
         report.diodes.clear();
         report.static_swing = StaticSwing {
+            up_emf: None,
+            down_emf: None,
             up: None,
             down: None,
             up_limited_by: None,
