@@ -88,8 +88,26 @@ struct Pass {
     end: State<f64>,
     /// ∂end/∂start, where asked for.
     map: Option<Matrix<f64>>,
-    /// Largest magnitude each state took.
-    scales: Vec<f64>,
+    /// States at phase zero and at the end of every element, one row each.
+    states: Vec<State<f64>>,
+}
+
+impl Pass {
+    /// How far each state moves over the period.
+    fn ranges(&self) -> Vec<f64> {
+        let mut low: Vec<f64> = self.states[0].iter().copied().collect();
+        let mut high = low.clone();
+        for state in &self.states {
+            for ((low, high), value) in low.iter_mut().zip(&mut high).zip(state.iter()) {
+                *low = low.min(*value);
+                *high = high.max(*value);
+            }
+        }
+        low.iter()
+            .zip(&high)
+            .map(|(low, high)| high - low)
+            .collect()
+    }
 }
 
 /// A periodic steady state.
@@ -306,13 +324,12 @@ impl<'a> PeriodicSolver<'a> {
         amplitude: f64,
         start: &State<f64>,
     ) -> Result<PeriodicSolution, EngineError> {
-        let mut local_error = self.options.first_local_error;
+        let drive = |phase: f64| amplitude * unit(phase);
         let mut start = start.clone();
         let mut best: Option<PeriodicSolution> = None;
         self.output_peak = None;
-        for _ in 0..7 {
-            let drive = |phase: f64| amplitude * unit(phase);
-            let mesh = self.shoot_adaptively(&drive, amplitude, &mut start, local_error)?;
+        let mut mesh = self.shoot_adaptively(&drive, amplitude, &mut start)?;
+        for _ in 0..MOST_REFINEMENTS {
             let coarse = self.shoot(&drive, amplitude, &mut start, &mesh, None)?;
             let fine_mesh: Vec<Element> = mesh.iter().flat_map(Element::halves).collect();
             let mut fine_start = start.clone();
@@ -325,20 +342,21 @@ impl<'a> PeriodicSolver<'a> {
             )?;
             let change = self.change(&coarse, &fine);
             if std::env::var_os("TRACE").is_some() {
-                eprintln!("bisection changes {change:.3e}");
+                eprintln!("bisection of {} changes {change:.3e}", mesh.len());
             }
-            let solution = self.solution(fine, fine_start, coarse.map.as_ref(), change);
-            if best
+            let better = best
                 .as_ref()
-                .is_none_or(|best| change < best.error_estimate)
-            {
-                best = Some(solution);
+                .is_none_or(|best| change < best.error_estimate);
+            if change > self.options.tolerance {
+                mesh = self.refined(&drive, amplitude, &coarse)?;
             }
-            if change <= self.options.tolerance {
+            if better {
+                start = fine_start.clone();
+                best = Some(self.solution(fine, fine_start, coarse.map.as_ref(), change));
+            }
+            if change <= self.options.tolerance || mesh.len() > MOST_ELEMENTS {
                 break;
             }
-            // the order of the method turns the excess into a factor of the local error
-            local_error *= (0.3 * self.options.tolerance / change).clamp(1e-3, 0.2);
         }
         let best = best.ok_or(EngineError::Undetermined)?;
         if best.largest_multiplier > 1.0 + 1e-6 {
@@ -368,8 +386,8 @@ impl<'a> PeriodicSolver<'a> {
         drive: UnitDrive,
         amplitude: f64,
         start: &mut State<f64>,
-        local_error: f64,
     ) -> Result<Vec<Element>, EngineError> {
+        let local_error = self.options.first_local_error;
         let mut last = f64::INFINITY;
         for sweep in 0..25 {
             let first_scale = self.output_peak.is_none();
@@ -382,7 +400,10 @@ impl<'a> PeriodicSolver<'a> {
             )?;
             let change = self.newton_update(&pass, start, pass.map.as_ref())?;
             if std::env::var_os("TRACE").is_some() {
-                eprintln!("adaptive {local_error:.1e}: {} elements, change {change:.3e}", pass.mesh.len());
+                eprintln!(
+                    "adaptive {local_error:.1e}: {} elements, change {change:.3e}",
+                    pass.mesh.len()
+                );
             }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
@@ -416,7 +437,10 @@ impl<'a> PeriodicSolver<'a> {
             }
             let change = self.newton_update(&pass, start, map.as_ref())?;
             if std::env::var_os("TRACE").is_some() {
-                eprintln!("  fixed: {} elements, change {change:.3e}, map {sensitive}", mesh.len());
+                eprintln!(
+                    "  fixed: {} elements, change {change:.3e}, map {sensitive}",
+                    mesh.len()
+                );
             }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
@@ -432,6 +456,109 @@ impl<'a> PeriodicSolver<'a> {
             last = change;
         }
         Err(self.no_period(amplitude, "the shooting did not settle on its mesh"))
+    }
+
+    /// The mesh of `coarse` with the elements bisected that carry its error: those whose end state and output integral
+    /// move most when they alone are solved in two halves.
+    fn refined(
+        &mut self,
+        drive: UnitDrive,
+        amplitude: f64,
+        coarse: &Pass,
+    ) -> Result<Vec<Element>, EngineError> {
+        let defects = self.defects(drive, amplitude, coarse)?;
+        let largest = defects.iter().copied().fold(0.0, f64::max);
+        let floor = (0.1 * self.options.tolerance)
+            .min(0.5 * largest)
+            .max(2e-3 * largest);
+        if std::env::var_os("TRACE").is_some() {
+            eprintln!(
+                "largest defect {largest:.3e}, {} above",
+                defects.iter().filter(|d| **d > floor).count()
+            );
+        }
+        let mut mesh = Vec::with_capacity(coarse.mesh.len() * 2);
+        for (element, defect) in coarse.mesh.iter().zip(&defects) {
+            if *defect <= floor || element.level >= FINEST_LEVEL {
+                mesh.push(*element);
+            } else if *defect > 64.0 * floor && element.level + 1 < FINEST_LEVEL {
+                mesh.extend(element.halves().iter().flat_map(Element::halves));
+            } else {
+                mesh.extend(element.halves());
+            }
+        }
+        Ok(mesh)
+    }
+
+    /// For each element of `coarse`, how far its end state and its output integral move when it alone is bisected,
+    /// relative to how far the state moves over the period and to the output's peak over the period.
+    fn defects(
+        &mut self,
+        drive: UnitDrive,
+        amplitude: f64,
+        coarse: &Pass,
+    ) -> Result<Vec<f64>, EngineError> {
+        let ranges = coarse.ranges();
+        let stages = self.radau.stages();
+        let ports = self.bank.ports();
+        let weights = self.radau.weights.clone();
+        let peak = self.output_peak.unwrap_or(1.0);
+        let inside: [Vec<Vec<f64>>; 2] = [0.0, 0.5].map(|first| {
+            self.radau
+                .nodes
+                .iter()
+                .map(|node| self.radau.reading(first + 0.5 * node))
+                .collect()
+        });
+        let mut sweep = Sweep::new(self, drive, amplitude, &coarse.states[0], false);
+        let mut defects = Vec::with_capacity(coarse.mesh.len());
+        for (k, element) in coarse.mesh.iter().enumerate() {
+            let own = &coarse.ports[k * stages * ports..(k + 1) * stages * ports];
+            let before = if k == 0 { coarse.mesh.len() - 1 } else { k - 1 };
+            let last =
+                &coarse.ports[((before + 1) * stages - 1) * ports..(before + 1) * stages * ports];
+            sweep.state.clone_from(&coarse.states[k]);
+            let mut integral = 0.0;
+            for (half, reading) in element.halves().iter().zip(&inside) {
+                for (stage, weights) in reading.iter().enumerate() {
+                    for port in 0..ports {
+                        let inner: f64 = (0..stages)
+                            .map(|j| weights[j + 1] * own[j * ports + port])
+                            .sum();
+                        sweep.v[stage * ports + port] = weights[0] * last[port] + inner;
+                    }
+                }
+                if !sweep.solve(*half)? {
+                    return Err(sweep.no_step(*half));
+                }
+                integral += 0.5
+                    * weights
+                        .iter()
+                        .zip(&sweep.y)
+                        .map(|(w, y)| w * y)
+                        .sum::<f64>();
+                sweep.advance(*half);
+            }
+            let coarse_integral: f64 = weights
+                .iter()
+                .zip(&coarse.outputs[k * stages..])
+                .map(|(w, y)| w * y)
+                .sum();
+            let share = element.length() as f64 / (1u64 << FINEST) as f64;
+            let mut defect = (integral - coarse_integral).abs() * share / peak;
+            for ((now, then), range) in sweep
+                .state
+                .iter()
+                .zip(coarse.states[k + 1].iter())
+                .zip(&ranges)
+            {
+                if *range > 0.0 {
+                    defect = defect.max((now - then).abs() / range);
+                }
+            }
+            defects.push(defect);
+        }
+        Ok(defects)
     }
 
     /// Move `start` by the Newton correction of the shooting; returns its size relative to the states' own size.
@@ -469,10 +596,10 @@ impl<'a> PeriodicSolver<'a> {
             .map_err(|_| EngineError::Undetermined)?
             .solve(&mut update);
         let largest_state = pass
-            .scales
+            .states
             .iter()
-            .zip(&scales)
-            .map(|(state, scale)| state / scale)
+            .flat_map(|state| state.iter().zip(&scales))
+            .map(|(value, scale)| value.abs() / scale)
             .fold(0.0, f64::max);
         let mut change = 0.0f64;
         for ((value, update), scale) in start.iter_mut().zip(&update).zip(&scales) {
@@ -681,7 +808,7 @@ impl<'s, 'a> Sweep<'s, 'a> {
                 outputs: Vec::new(),
                 end: start.clone(),
                 map: sensitive.then(|| Matrix::identity(start.len())),
-                scales: start.iter().map(|value| value.abs()).collect(),
+                states: vec![start.clone()],
             },
             state: start.clone(),
             end: start.clone(),
@@ -737,28 +864,18 @@ impl<'s, 'a> Sweep<'s, 'a> {
             } else {
                 f64::INFINITY
             };
-            if std::env::var_os("TRACE2").is_some() {
-                eprintln!("L{} at {:.12} err {error:.3e} v {:?} pred {:?} y {:?} yp {:?} it {}", element.level, element.phase(0.0), self.v, self.predicted, self.y, self.y_predicted, self.solver.stepper.iterations);
-            }
-            if error > 1.0 && element.level < FINEST - 4 {
+            if error > 1.0 && element.level < FINEST_LEVEL {
                 element.level += if error > 256.0 { 2 } else { 1 };
-                element.level = element.level.min(FINEST - 4);
+                element.level = element.level.min(FINEST_LEVEL);
                 continue;
             }
             if error == f64::INFINITY {
                 return Err(self.no_step(element));
             }
             if self.pass.mesh.len() >= MOST_ELEMENTS {
-                if std::env::var_os("TRACE").is_some() {
-                    let mut count = std::collections::BTreeMap::new();
-                    for e in &self.pass.mesh { *count.entry(e.level).or_insert(0) += 1; }
-                    eprintln!("levels {count:?} at phase {}", element.phase(0.0));
-                    for e in &self.pass.mesh[19990..] { eprint!(" {}", e.level); }
-                    let n = self.pass.outputs.len();
-                    let p = self.pass.ports.len();
-                    eprintln!("\ny {:?} v {:?} anchor {:?} predicted {:?} {:?} yscale {}", &self.pass.outputs[n-6..], &self.pass.ports[p-6..], self.solver.bank.anchor(), self.predicted, self.y_predicted, self.y_scale);
-                }
-                return Err(self.solver.no_period(self.y_scale, "the mesh grew beyond bounds"));
+                return Err(self
+                    .solver
+                    .no_period(self.y_scale, "the mesh grew beyond bounds"));
             }
             self.accept(element);
             let mut next = Element {
@@ -785,8 +902,13 @@ impl<'s, 'a> Sweep<'s, 'a> {
 
     /// Solve one element; false where Newton's method fails.
     fn attempt(&mut self, element: Element) -> Result<bool, EngineError> {
-        self.solver.reduction(element.level)?;
         self.predict(element);
+        self.solve(element)
+    }
+
+    /// Solve one element from the guess in `self.v`; false where Newton's method fails.
+    fn solve(&mut self, element: Element) -> Result<bool, EngineError> {
+        self.solver.reduction(element.level)?;
         for (stage, value) in self.forcing.iter_mut().enumerate() {
             *value = (self.drive)(element.phase(self.solver.radau.nodes[stage]));
         }
@@ -861,9 +983,8 @@ impl<'s, 'a> Sweep<'s, 'a> {
         (output / (allowed * self.y_scale)).max(port_error / PORT_ERROR)
     }
 
-    fn accept(&mut self, element: Element) {
-        let ports = self.solver.bank.ports();
-        let stages = self.solver.radau.stages();
+    /// Move the state to the end of the element just solved.
+    fn advance(&mut self, element: Element) {
         let reduction = &self.solver.reductions[&element.level];
         self.solver
             .stepper
@@ -874,9 +995,13 @@ impl<'s, 'a> Sweep<'s, 'a> {
                 .carry_sensitivity(&self.solver.bank, reduction, map);
         }
         std::mem::swap(&mut self.state, &mut self.end);
-        for (scale, value) in self.pass.scales.iter_mut().zip(self.state.iter()) {
-            *scale = scale.max(value.abs());
-        }
+    }
+
+    fn accept(&mut self, element: Element) {
+        let ports = self.solver.bank.ports();
+        let stages = self.solver.radau.stages();
+        self.advance(element);
+        self.pass.states.push(self.state.clone());
         let mut values = Vec::with_capacity((stages + 1) * ports);
         let mut outputs = Vec::with_capacity(stages + 1);
         match self.v_start.take() {
@@ -915,6 +1040,10 @@ impl<'s, 'a> Sweep<'s, 'a> {
 
 /// Most elements of one period.
 const MOST_ELEMENTS: usize = 20_000;
+/// Most rounds of refinement.
+const MOST_REFINEMENTS: usize = 14;
+/// Finest element: the period over 2 to this power.
+const FINEST_LEVEL: u32 = 36;
 /// Distance from the extrapolation allowed at a port, in widths of its exponential.
 const PORT_ERROR: f64 = 0.3;
 
