@@ -382,7 +382,10 @@ impl<'a> PeriodicSolver<'a> {
             )?;
             let change = self.newton_update(&pass, start, pass.map.as_ref())?;
             if std::env::var_os("TRACE").is_some() {
-                eprintln!("adaptive {local_error:.1e}: {} elements, change {change:.3e}", pass.mesh.len());
+                eprintln!(
+                    "adaptive {local_error:.1e}: {} elements, change {change:.3e}",
+                    pass.mesh.len()
+                );
             }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
@@ -416,7 +419,10 @@ impl<'a> PeriodicSolver<'a> {
             }
             let change = self.newton_update(&pass, start, map.as_ref())?;
             if std::env::var_os("TRACE").is_some() {
-                eprintln!("  fixed: {} elements, change {change:.3e}, map {sensitive}", mesh.len());
+                eprintln!(
+                    "  fixed: {} elements, change {change:.3e}, map {sensitive}",
+                    mesh.len()
+                );
             }
             if !change.is_finite() {
                 return Err(self.no_period(amplitude, "the shooting diverged"));
@@ -738,7 +744,16 @@ impl<'s, 'a> Sweep<'s, 'a> {
                 f64::INFINITY
             };
             if std::env::var_os("TRACE2").is_some() {
-                eprintln!("L{} at {:.12} err {error:.3e} v {:?} pred {:?} y {:?} yp {:?} it {}", element.level, element.phase(0.0), self.v, self.predicted, self.y, self.y_predicted, self.solver.stepper.iterations);
+                eprintln!(
+                    "L{} at {:.12} err {error:.3e} v {:?} pred {:?} y {:?} yp {:?} it {}",
+                    element.level,
+                    element.phase(0.0),
+                    self.v,
+                    self.predicted,
+                    self.y,
+                    self.y_predicted,
+                    self.solver.stepper.iterations
+                );
             }
             if error > 1.0 && element.level < FINEST - 4 {
                 element.level += if error > 256.0 { 2 } else { 1 };
@@ -751,14 +766,28 @@ impl<'s, 'a> Sweep<'s, 'a> {
             if self.pass.mesh.len() >= MOST_ELEMENTS {
                 if std::env::var_os("TRACE").is_some() {
                     let mut count = std::collections::BTreeMap::new();
-                    for e in &self.pass.mesh { *count.entry(e.level).or_insert(0) += 1; }
+                    for e in &self.pass.mesh {
+                        *count.entry(e.level).or_insert(0) += 1;
+                    }
                     eprintln!("levels {count:?} at phase {}", element.phase(0.0));
-                    for e in &self.pass.mesh[19990..] { eprint!(" {}", e.level); }
+                    for e in &self.pass.mesh[19990..] {
+                        eprint!(" {}", e.level);
+                    }
                     let n = self.pass.outputs.len();
                     let p = self.pass.ports.len();
-                    eprintln!("\ny {:?} v {:?} anchor {:?} predicted {:?} {:?} yscale {}", &self.pass.outputs[n-6..], &self.pass.ports[p-6..], self.solver.bank.anchor(), self.predicted, self.y_predicted, self.y_scale);
+                    eprintln!(
+                        "\ny {:?} v {:?} anchor {:?} predicted {:?} {:?} yscale {}",
+                        &self.pass.outputs[n - 6..],
+                        &self.pass.ports[p - 6..],
+                        self.solver.bank.anchor(),
+                        self.predicted,
+                        self.y_predicted,
+                        self.y_scale
+                    );
                 }
-                return Err(self.solver.no_period(self.y_scale, "the mesh grew beyond bounds"));
+                return Err(self
+                    .solver
+                    .no_period(self.y_scale, "the mesh grew beyond bounds"));
             }
             self.accept(element);
             let mut next = Element {
