@@ -8,7 +8,7 @@
 
 use super::report::Harmonic;
 use crate::engine::PeriodicSolution;
-use crate::numeric::fourier::{Spectrum, UnevenPeriod, oscillating_moments};
+use crate::numeric::fourier::{Moments, Spectrum, UnevenPeriod, oscillating_moments};
 use rustfft::{FftPlanner, num_complex::Complex};
 
 /// Harmonics always reported.
@@ -111,7 +111,7 @@ fn distortion_power(solution: &PeriodicSolution, spectrum: &Spectrum, highest: u
 /// Σ Hn² for n = `from`…`to`, each coefficient the exact integral of the collocation polynomials, V².
 fn integrated_power(solution: &PeriodicSolution, from: usize, to: usize) -> f64 {
     let mut sums = vec![Complex::new(0.0, 0.0); to + 1 - from];
-    let mut moments: Vec<(f64, Vec<[(f64, f64); 4]>)> = Vec::new();
+    let mut moments: Vec<(f64, Vec<Moments>)> = Vec::new();
     for (start, length, cubic) in solution.cubics() {
         // a dyadic mesh has a handful of lengths
         let known = moments

@@ -129,11 +129,14 @@ impl UnevenPeriod {
     }
 }
 
+/// The first four moments of an oscillation, as (real, imaginary).
+pub type Moments = [(f64, f64); 4];
+
 /// Moments `½·∫ τ^m·e^(−iθτ) dτ` over τ in [−1, 1] for m = 0…3, as (real, imaginary).
 ///
 /// By parts from m = 0 upwards for large θ, where that is stable, and by the power series for small θ
 /// (L. N. G. Filon, "On a quadrature formula for trigonometric integrals", Proc. R. Soc. Edinburgh 49, 1928).
-pub fn oscillating_moments(theta: f64) -> [(f64, f64); 4] {
+pub fn oscillating_moments(theta: f64) -> Moments {
     if theta.abs() < 2.0 {
         return std::array::from_fn(|power| series_moment(power, theta));
     }
