@@ -3,7 +3,10 @@
 mod bias;
 mod distortion;
 mod error;
+mod interrupt;
+mod listen;
 mod output;
+mod progress;
 mod report;
 mod stage;
 mod start;
@@ -25,6 +28,7 @@ pub fn run_from_arguments() -> ExitCode {
             return ExitCode::from(u8::try_from(refusal.exit_code()).unwrap_or(2));
         }
     };
+    interrupt::install();
     match run(&arguments.command) {
         Ok(()) => ExitCode::SUCCESS,
         Err(error) => {
@@ -39,5 +43,6 @@ fn run(command: &Command) -> Result<(), CommandError> {
         Command::Start(arguments) => start::run(arguments),
         Command::Bias(arguments) => bias::run(arguments),
         Command::Distortion(arguments) => distortion::run(arguments),
+        Command::Listen(arguments) => listen::run(arguments),
     }
 }

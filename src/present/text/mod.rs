@@ -2,10 +2,12 @@
 
 mod bias;
 mod distortion;
+mod listen;
 
 pub use bias::bias;
 pub use distortion::distortion;
 pub(super) use distortion::{bandwidth, definition};
+pub use listen::listen;
 
 use super::conditions;
 use super::format::plain;
