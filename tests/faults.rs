@@ -139,6 +139,11 @@ fn one_fault_gives_one_message_at_its_place() {
             "[nominal]\nimput",
             "32:1: [nominal]: unknown key \"imput\"; did you mean \"input\"?",
         ),
+        (
+            "title = \"Sound\"",
+            "title = \"S\\u001b\"",
+            "1:9: title \"S\\u{1b}\" may have no control characters",
+        ),
         // Names.
         (
             "[ratings.Q1]",
@@ -647,6 +652,35 @@ fn messages_carry_no_control_characters_and_stay_short() {
             !message.contains('\u{1b}') && message.len() < 400,
             "{message}"
         );
+    }
+}
+
+#[test]
+fn nesting_without_end_is_refused_not_recursed() {
+    for text in [
+        "a = ".to_owned() + &"[".repeat(200_000),
+        "a = ".to_owned() + &"{ a = ".repeat(200_000),
+        "a.".repeat(200_000) + "a = 1",
+        format!("[{}a]", "a.".repeat(200_000)),
+    ] {
+        assert!(read(&text).is_err());
+    }
+}
+
+proptest::proptest! {
+    #[test]
+    fn no_spoiled_file_makes_it_panic(start in 0..SOUND.len(), length in 0..40usize, with in "[-a-z0-9.,\"'=\\[\\]{}#µ \n\u{0}]{0,12}") {
+        let end = (start + length).min(SOUND.len());
+        if let (Some(before), Some(after)) = (SOUND.get(..start), SOUND.get(end..)) {
+            // Whatever it says, it names a place inside the file.
+            let text = format!("{before}{with}{after}");
+            if let Err(StageError::Faulty { faults, .. }) = read(&text) {
+                for fault in faults {
+                    proptest::prop_assert!(fault.line >= 1 && fault.line <= text.lines().count() + 1, "{fault:?}");
+                    proptest::prop_assert!(fault.column >= 1, "{fault:?}");
+                }
+            }
+        }
     }
 }
 

@@ -19,7 +19,7 @@ pub use decimal::Decimal;
 pub use error::ValueError;
 pub use format::engineering as format_engineering;
 pub use frequency::Frequency;
-pub use level::Level;
+pub use level::{Level, dbu_reference};
 pub use list::{Element, List};
 pub use quote::quoted;
 pub use ratio::Percent;

@@ -3,12 +3,16 @@
 mod cautions;
 mod check;
 mod description;
+mod device_tables;
 mod devices;
 mod faults;
 mod gang;
 mod groups;
+mod kinds;
+mod loops;
 mod names;
 mod overrides;
+mod part_settings;
 mod parts;
 mod read;
 mod sections;

@@ -393,6 +393,10 @@ mod tests {
                 "--set temperature=-300C: \"-300C\" must be above absolute zero, -273.15C",
             ),
             (
+                "load=10k",
+                "--set load=10k: name one of its values, such as load.KEY=VALUE",
+            ),
+            (
                 "vcc.volts.x=1",
                 "--set vcc.volts.x=1: the stage has no \"vcc.volts.x\"",
             ),

@@ -1,13 +1,13 @@
-//! `[parts]`: every kind of part, its value, terminals and extras.
+//! `[parts]`: what each part is, and the extras all kinds share.
 
 use std::collections::HashMap;
 
-use super::description::{Condition, Part, PartKind, TrackLaw};
-use super::devices::{Device, Devices, Parameters, Role};
-use super::names;
-use super::table::{Entry, Fields, Given, Reader};
+use super::description::{Condition, Part};
+use super::devices::{Devices, Role};
+use super::table::{Entry, Fields, Reader};
+use super::{kinds, names};
+use crate::device::Ratings;
 use crate::device::keys::{CAPACITOR_RATINGS, Key, RESISTOR_RATINGS, Range};
-use crate::device::{DiodeParameters, Polarity, Ratings, TransistorParameters};
 use crate::quantity::{Unit, quoted, ratio};
 
 /// The keys that say what a part is, each with the further keys its kind knows.
@@ -111,13 +111,13 @@ fn part(reader: &mut Reader, entry: &Entry, fields: &Fields, devices: &Devices) 
 
     let mut ratings = Ratings::default();
     let kind = match kind_key {
-        "resistor" => resistor(reader, fields),
-        "capacitor" => capacitor(reader, fields),
-        "inductor" => inductor(reader, fields),
-        "potentiometer" => potentiometer(reader, fields),
-        "current" => current_source(reader, fields),
-        "diode" => diode(reader, fields, devices, &mut ratings),
-        _ => transistor(reader, fields, devices, kind_key, &mut ratings),
+        "resistor" => kinds::resistor(reader, fields),
+        "capacitor" => kinds::capacitor(reader, fields),
+        "inductor" => kinds::inductor(reader, fields),
+        "potentiometer" => kinds::potentiometer(reader, fields),
+        "current" => kinds::current_source(reader, fields),
+        "diode" => kinds::diode(reader, fields, devices, &mut ratings),
+        _ => kinds::transistor(reader, fields, devices, kind_key, &mut ratings),
     };
     if let Some(keys) = rating_keys(kind_key) {
         fields.fill(reader, &mut ratings, keys);
@@ -209,233 +209,4 @@ fn tolerance(reader: &mut Reader, fields: &Fields) -> Option<f64> {
         });
     }
     Some(value)
-}
-
-fn resistor(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
-    let ohms = fields.required(reader, "resistor", Unit::Ohm, Range::Positive);
-    Some(PartKind::Resistor {
-        ohms,
-        pins: pins(reader, fields)?,
-    })
-}
-
-fn capacitor(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
-    let farads = fields.required(reader, "capacitor", Unit::Farad, Range::Positive);
-    let series_resistance = fields
-        .quantity(reader, "series_resistance", Unit::Ohm, Range::NotNegative)
-        .unwrap_or(0.0);
-    let leakage = fields
-        .quantity(reader, "leakage", Unit::Ohm, Range::Positive)
-        .value();
-    let polarised = fields.has("plus") || fields.has("minus");
-    let pins = if polarised {
-        plus_and_minus(reader, fields)?
-    } else {
-        pins(reader, fields)?
-    };
-    Some(PartKind::Capacitor {
-        farads,
-        pins,
-        polarised,
-        series_resistance,
-        leakage,
-    })
-}
-
-fn plus_and_minus(reader: &mut Reader, fields: &Fields) -> Option<[String; 2]> {
-    if let Some(entry) = fields.get("pins") {
-        reader.connection_fault(entry.key_at, || {
-            format!("{}has pins beside plus and minus; plus and minus mark a polarised part, pins one that is not", fields.prefix())
-        });
-        return None;
-    }
-    let (plus, minus) = (fields.node(reader, "plus"), fields.node(reader, "minus"));
-    Some([plus?, minus?])
-}
-
-fn inductor(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
-    let henries = fields.required(reader, "inductor", Unit::Henry, Range::Positive);
-    let resistance = fields
-        .quantity(reader, "resistance", Unit::Ohm, Range::NotNegative)
-        .unwrap_or(0.0);
-    Some(PartKind::Inductor {
-        henries,
-        pins: pins(reader, fields)?,
-        resistance,
-    })
-}
-
-fn potentiometer(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
-    let ohms = fields.required(reader, "potentiometer", Unit::Ohm, Range::Positive);
-    let turn = fields.quantity(reader, "turn", Unit::Plain, Range::ZeroToOne);
-    let gang = fields
-        .string(reader, "gang")
-        .value()
-        .map(|(name, _)| name.to_owned());
-    if turn == Given::Missing && gang.is_none() && !fields.misspells("turn") {
-        reader.fault(fields.at, || {
-            format!(
-                "{}turn is missing; needs 0 (anticlockwise) to 1, or gang",
-                fields.prefix()
-            )
-        });
-    }
-    if let (Some(entry), true) = (fields.get("turn"), gang.is_some()) {
-        reader.fault(entry.key_at, || {
-            format!(
-                "{}has both turn and gang; a ganged track follows the other",
-                fields.prefix()
-            )
-        });
-    }
-    let law = law(reader, fields);
-    let clockwise = fields.node(reader, "clockwise");
-    let wiper = fields.node(reader, "wiper");
-    let anticlockwise = fields.node(reader, "anticlockwise");
-    Some(PartKind::Potentiometer {
-        ohms,
-        clockwise: clockwise?,
-        wiper: wiper?,
-        anticlockwise: anticlockwise?,
-        turn: turn.unwrap_or(0.5),
-        law,
-        gang,
-    })
-}
-
-fn law(reader: &mut Reader, fields: &Fields) -> TrackLaw {
-    let Given::Value((name, at)) = fields.string(reader, "law") else {
-        return TrackLaw::Linear;
-    };
-    TrackLaw::of_name(name).unwrap_or_else(|| {
-        reader.fault(at, || {
-            format!(
-                "{}law is {}, must be linear, audio or reverse-audio",
-                fields.prefix(),
-                quoted(name)
-            )
-        });
-        TrackLaw::Linear
-    })
-}
-
-fn current_source(reader: &mut Reader, fields: &Fields) -> Option<PartKind> {
-    let amperes = fields.required(reader, "current", Unit::Ampere, Range::Any);
-    let (from, to) = (fields.node(reader, "from"), fields.node(reader, "to"));
-    Some(PartKind::CurrentSource {
-        amperes,
-        from: from?,
-        to: to?,
-    })
-}
-
-/// The class a part names, with that name.
-fn device(
-    reader: &mut Reader,
-    fields: &Fields,
-    devices: &Devices,
-    key: &str,
-) -> (String, Option<Device>) {
-    let Given::Value((name, at)) = fields.string(reader, key) else {
-        return (String::new(), None);
-    };
-    let found =
-        Role::of_key(key).and_then(|role| devices.find(reader, &fields.owner, name, role, at));
-    (name.to_owned(), found)
-}
-
-fn diode(
-    reader: &mut Reader,
-    fields: &Fields,
-    devices: &Devices,
-    ratings: &mut Ratings,
-) -> Option<PartKind> {
-    let (name, device) = device(reader, fields, devices, "diode");
-    let mut parameters = Box::new(DiodeParameters::exponential(1.0));
-    if let Some(device) = device
-        && let Parameters::Diode(set) = device.parameters
-    {
-        parameters = set;
-        *ratings = device.ratings;
-    }
-    let (anode, cathode) = (fields.node(reader, "anode"), fields.node(reader, "cathode"));
-    Some(PartKind::Diode {
-        device: name,
-        parameters,
-        anode: anode?,
-        cathode: cathode?,
-    })
-}
-
-fn transistor(
-    reader: &mut Reader,
-    fields: &Fields,
-    devices: &Devices,
-    key: &str,
-    ratings: &mut Ratings,
-) -> Option<PartKind> {
-    let (name, device) = device(reader, fields, devices, key);
-    let mut parameters = Box::new(TransistorParameters::exponential(1.0, 1.0));
-    let mut gain_range = None;
-    if let Some(device) = device
-        && let Parameters::Transistor(_, set) = device.parameters
-    {
-        parameters = set;
-        gain_range = device.gain_range;
-        *ratings = device.ratings;
-    }
-    let polarity = if key == "npn" {
-        Polarity::Npn
-    } else {
-        Polarity::Pnp
-    };
-    let collector = fields.node(reader, "collector");
-    let base = fields.node(reader, "base");
-    let emitter = fields.node(reader, "emitter");
-    Some(PartKind::Transistor {
-        polarity,
-        device: name,
-        parameters,
-        gain_range,
-        collector: collector?,
-        base: base?,
-        emitter: emitter?,
-    })
-}
-
-fn pins(reader: &mut Reader, fields: &Fields) -> Option<[String; 2]> {
-    let Some(entry) = fields.get("pins") else {
-        reader.connections_known = false;
-        if fields.misspells("pins") {
-            return None;
-        }
-        reader.fault(fields.at, || {
-            format!(
-                "{}pins is missing; needs two node names such as [\"in\", \"base\"]",
-                fields.prefix()
-            )
-        });
-        return None;
-    };
-    let names: Vec<_> = entry.elements().unwrap_or_default();
-    if names.len() != 2 || names.iter().any(|name| name.value.as_str().is_none()) {
-        reader.connection_fault(entry.at, || {
-            format!(
-                "{}pins must be two node names in quotes such as [\"in\", \"base\"]",
-                fields.prefix()
-            )
-        });
-        return None;
-    }
-    let mut node = |index: usize| {
-        let pin: &Entry = &names[index];
-        fields.node_name(
-            reader,
-            "pins",
-            pin.value.as_str().unwrap_or_default(),
-            pin.at,
-        )
-    };
-    let (first, second) = (node(0), node(1));
-    Some([first?, second?])
 }

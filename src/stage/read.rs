@@ -130,10 +130,7 @@ fn syntax_message(error: &toml::de::Error) -> String {
 
 fn stage(reader: &mut Reader, file: &Fields, file_name: &str) -> Option<Stage> {
     file.refuse_unknown(reader, &KEYS);
-    let title = file
-        .string(reader, "title")
-        .value()
-        .map(|(title, _)| title.to_owned());
+    let title = title(reader, file);
     let input = file.node(reader, "input");
     let output = file.node(reader, "output");
     let temperature = file
@@ -216,6 +213,17 @@ fn terminal(file: &Fields, part: &str, key: &str, index: usize) -> Option<usize>
     let node = parts.get(part)?.get_ref().as_table()?.get(key)?;
     let pin = node.get_ref().as_array().and_then(|pins| pins.get(index));
     Some(pin.unwrap_or(node).span().start)
+}
+
+fn title(reader: &mut Reader, file: &Fields) -> Option<String> {
+    let (title, at) = file.string(reader, "title").value()?;
+    // It is printed as it stands, on terminals too.
+    if title.chars().any(char::is_control) {
+        reader.fault(at, || {
+            format!("title {} may have no control characters", quoted(title))
+        });
+    }
+    Some(title.to_owned())
 }
 
 fn stem(file_name: &str) -> String {
