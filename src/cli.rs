@@ -31,6 +31,8 @@ pub struct Arguments {
 /// The subcommands.
 #[derive(Debug, Subcommand)]
 pub enum Command {
+    /// Show what this does, now: a stage, its figures, plots and sound, in the folder cleanswing-demo.
+    Demo,
     /// List the stage files to start from, or write one.
     Start(StartArguments),
     /// Where the stage sits: node voltages, currents, supply, static swing.

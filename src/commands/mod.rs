@@ -1,6 +1,7 @@
 //! One short file a subcommand: read, build, solve, measure, present.
 
 mod bias;
+mod demo;
 mod distortion;
 mod error;
 mod interrupt;
@@ -40,6 +41,7 @@ pub fn run_from_arguments() -> ExitCode {
 
 fn run(command: &Command) -> Result<(), CommandError> {
     match command {
+        Command::Demo => demo::run(),
         Command::Start(arguments) => start::run(arguments),
         Command::Bias(arguments) => bias::run(arguments),
         Command::Distortion(arguments) => distortion::run(arguments),
