@@ -4,13 +4,16 @@ use std::path::PathBuf;
 
 use clap::{Args, Parser, Subcommand};
 
+use crate::audio::dither::Dither;
+use crate::audio::oversample::MAX_FACTOR;
+use crate::audio::wav::SampleFormat;
 use crate::measure::distortion::DEFAULT_BANDWIDTH;
-use crate::quantity::{Frequency, Level, List, ValueError};
+use crate::quantity::{Frequency, Level, List, ValueError, quoted};
 use crate::stage::Override;
 
 /// What a transistor audio stage does to sound: bias, gain, distortion, and the sound itself.
 ///
-/// A stage is described in one text file. Results go to standard output,
+/// A stage is described in one text file; `cleanswing demo` shows all of it at work. Results go to standard output,
 /// cautions and progress to standard error.
 #[derive(Debug, Parser)]
 #[command(
@@ -28,12 +31,16 @@ pub struct Arguments {
 /// The subcommands.
 #[derive(Debug, Subcommand)]
 pub enum Command {
+    /// Show what this does, now: a stage, its figures, plots and sound, in the folder cleanswing-demo.
+    Demo,
     /// List the stage files to start from, or write one.
     Start(StartArguments),
     /// Where the stage sits: node voltages, currents, supply, static swing.
     Bias(BiasArguments),
     /// THD and every harmonic against input level and frequency.
     Distortion(DistortionArguments),
+    /// Play a WAV file through the stage.
+    Listen(ListenArguments),
 }
 
 /// `start`.
@@ -114,6 +121,48 @@ pub struct DistortionArguments {
     pub report: ReportArguments,
 }
 
+/// `listen`.
+#[derive(Debug, Args)]
+pub struct ListenArguments {
+    /// The stage.
+    #[command(flatten)]
+    pub stage: StageArguments,
+    /// The sound to play: a WAV file of 16, 24 or 32-bit integer or 32-bit float samples.
+    #[arg(value_name = "INPUT.wav")]
+    pub input: PathBuf,
+    /// Write the sound that comes out to OUTPUT.wav, as many samples at the same rate.
+    #[arg(short, long, value_name = "OUTPUT.wav")]
+    pub output: PathBuf,
+    /// Let digital full scale of the input be this source EMF: 200mVpk is its peak, +18dBu or 1V the rms of a
+    /// full-scale sine.
+    #[arg(long, value_name = "LEVEL", value_parser = positive_level, allow_hyphen_values = true)]
+    pub full_scale: Option<Level>,
+    /// Let digital full scale of the output be this voltage, or fit it: two passes, the true peak at -1 dBTP.
+    #[arg(
+        long,
+        value_name = "LEVEL",
+        default_value = "fit",
+        allow_hyphen_values = true
+    )]
+    pub output_full_scale: OutputFullScale,
+    /// Step the stage at N times the sampling rate; without it at the least product of twos and threes that makes
+    /// 384 kHz or more.
+    #[arg(long, value_name = "N", value_parser = factor, allow_hyphen_values = true)]
+    pub oversample: Option<usize>,
+    /// Store samples as s16, s24 or s32 (integers) or f32 (float, which cannot clip).
+    #[arg(long, value_name = "FORMAT", default_value = "s24")]
+    pub format: SampleFormat,
+    /// Round integers with tpdf dither or with none.
+    #[arg(long, value_name = "DITHER", default_value = "tpdf")]
+    pub dither: Dither,
+    /// Replace OUTPUT.wav where it exists.
+    #[arg(long)]
+    pub overwrite: bool,
+}
+
+/// Full scale without `--full-scale`, V peak.
+pub const ASSUMED_FULL_SCALE: f64 = 1.0;
+
 /// Upper edge of the harmonics that count, Hz; `None` for no edge.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Bandwidth(pub Option<f64>);
@@ -138,6 +187,49 @@ impl std::fmt::Display for Bandwidth {
             None => write!(out, "none"),
         }
     }
+}
+
+/// What digital full scale of the output stands for.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum OutputFullScale {
+    /// Whatever puts the true peak at −1 dBTP.
+    Fit,
+    /// A stated voltage.
+    Level(Level),
+}
+
+impl std::str::FromStr for OutputFullScale {
+    type Err = String;
+
+    fn from_str(text: &str) -> Result<Self, String> {
+        match text {
+            "fit" => Ok(OutputFullScale::Fit),
+            _ => positive_level(text)
+                .map(OutputFullScale::Level)
+                .map_err(|error| format!("{error}, or fit")),
+        }
+    }
+}
+
+fn positive_level(text: &str) -> Result<Level, String> {
+    let level: Level = text
+        .parse()
+        .map_err(|error: ValueError| error.to_string())?;
+    if level.rms > 0.0 {
+        Ok(level)
+    } else {
+        Err(format!(
+            "{} is nothing, must be above 0 V such as 200mVpk or +18dBu",
+            quoted(text)
+        ))
+    }
+}
+
+fn factor(text: &str) -> Result<usize, String> {
+    text.parse()
+        .ok()
+        .filter(|factor| (1..=MAX_FACTOR).contains(factor))
+        .ok_or_else(|| format!("must be a whole number from 1 to {MAX_FACTOR}"))
 }
 
 #[cfg(test)]
@@ -165,6 +257,14 @@ mod tests {
                 );
             }
         }
+    }
+
+    #[test]
+    fn a_full_scale_is_the_peak_of_a_full_scale_sine() {
+        // Peak as typed; +18 dBu is 0.7746·10^(18/20) = 6.153 V rms, √2 times that at the peak.
+        assert!((positive_level("200mVpk").unwrap().peak() - 0.2).abs() < 1e-15);
+        assert!((positive_level("+18dBu").unwrap().peak() - 8.7018).abs() < 1e-3);
+        assert!(positive_level("0V").is_err());
     }
 
     #[test]

@@ -1,5 +1,6 @@
 //! `distortion`: THD and harmonics against level and frequency.
 
+use super::progress::Waiting;
 use super::report::{self, Faces};
 use super::{CommandError, stage};
 use crate::cli::DistortionArguments;
@@ -10,8 +11,10 @@ use crate::present::{csv, json, plot, text};
 pub fn run(arguments: &DistortionArguments) -> Result<(), CommandError> {
     let file = report::plot_file(&arguments.report)?;
     let stage = stage::read(&arguments.stage)?;
+    let waiting = Waiting::new("measuring");
     let found = distortion(&stage, &request(arguments))
         .map_err(CommandError::engine(&arguments.stage.stage))?;
+    drop(waiting);
     let faces = Faces {
         text: text::distortion,
         json: json::distortion,

@@ -8,6 +8,7 @@ use crate::audio::AudioError;
 use crate::engine::EngineError;
 use crate::failure::FailureKind;
 use crate::present::plot::PlotError;
+use crate::render::RenderError;
 use crate::stage::starters::UnknownStarter;
 use crate::stage::{OverrideError, StageError};
 
@@ -50,11 +51,6 @@ pub enum CommandError {
         /// What the file is for.
         what: &'static str,
     },
-    /// Input and output are one file.
-    SameFile {
-        /// The file as given.
-        path: PathBuf,
-    },
     /// Stopped by the user.
     Interrupted,
 }
@@ -73,8 +69,15 @@ impl CommandError {
             CommandError::Exists { .. }
             | CommandError::Unwritable { .. }
             | CommandError::Output(_)
-            | CommandError::NeedsFile { .. }
-            | CommandError::SameFile { .. } => FailureKind::BadRequest,
+            | CommandError::NeedsFile { .. } => FailureKind::BadRequest,
+        }
+    }
+
+    /// An error of rendering, with the stage it concerns.
+    pub fn render(stage: &Path) -> impl Fn(RenderError) -> CommandError + use<'_> {
+        |error| match error {
+            RenderError::Engine(error) => CommandError::engine(stage)(error),
+            RenderError::Audio(error) => CommandError::Audio(error),
         }
     }
 
@@ -112,11 +115,6 @@ impl fmt::Display for CommandError {
             CommandError::NeedsFile { what } => {
                 write!(out, "-: {what} must be an ordinary file, not a pipe")
             }
-            CommandError::SameFile { path } => write!(
-                out,
-                "{}: is both input and output; name another file behind -o",
-                path.display()
-            ),
             CommandError::Interrupted => write!(out, "interrupted; nothing half-written is left"),
         }
     }

@@ -1,9 +1,13 @@
 //! One short file a subcommand: read, build, solve, measure, present.
 
 mod bias;
+mod demo;
 mod distortion;
 mod error;
+mod interrupt;
+mod listen;
 mod output;
+mod progress;
 mod report;
 mod stage;
 mod start;
@@ -25,6 +29,7 @@ pub fn run_from_arguments() -> ExitCode {
             return ExitCode::from(u8::try_from(refusal.exit_code()).unwrap_or(2));
         }
     };
+    interrupt::install();
     match run(&arguments.command) {
         Ok(()) => ExitCode::SUCCESS,
         Err(error) => {
@@ -36,8 +41,10 @@ pub fn run_from_arguments() -> ExitCode {
 
 fn run(command: &Command) -> Result<(), CommandError> {
     match command {
+        Command::Demo => demo::run(),
         Command::Start(arguments) => start::run(arguments),
         Command::Bias(arguments) => bias::run(arguments),
         Command::Distortion(arguments) => distortion::run(arguments),
+        Command::Listen(arguments) => listen::run(arguments),
     }
 }
