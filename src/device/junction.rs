@@ -41,6 +41,16 @@ impl<L: Lane> ExponentialAnchor<L> {
 /// product `exp(v0)·expm1(v − v0)` could meet zero times infinity.
 const DEEP: f64 = -30.0;
 
+impl Exponential<f64> {
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> Exponential<L> {
+        Exponential {
+            scale: L::splat(self.scale),
+            inverse_width: L::splat(self.inverse_width),
+        }
+    }
+}
+
 impl<L: Lane> Exponential<L> {
     /// The anchor at `v` volts.
     pub fn anchor(&self, v: L) -> ExponentialAnchor<L> {
@@ -97,6 +107,19 @@ impl<L: Lane> DepletionAnchor<L> {
     /// The charge at the anchor, C.
     pub fn charge(&self) -> L {
         self.charge
+    }
+}
+
+impl Depletion<f64> {
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> Depletion<L> {
+        Depletion {
+            capacitance: L::splat(self.capacitance),
+            potential: L::splat(self.potential),
+            grading: L::splat(self.grading),
+            steep: L::splat(self.steep),
+            joint: L::splat(self.joint),
+        }
     }
 }
 
