@@ -45,6 +45,16 @@ const DEEP: f64 = -30.0;
 /// way, −1 times the scale.
 const NOTHING: f64 = -39.0;
 
+impl Exponential<f64> {
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> Exponential<L> {
+        Exponential {
+            scale: L::splat(self.scale),
+            inverse_width: L::splat(self.inverse_width),
+        }
+    }
+}
+
 impl<L: Lane> Exponential<L> {
     /// The anchor at `v` volts.
     pub fn anchor(&self, v: L) -> ExponentialAnchor<L> {
@@ -117,6 +127,23 @@ impl<L: Lane> DepletionAnchor<L> {
     /// The charge at the anchor, C.
     pub fn charge(&self) -> L {
         self.charge
+    }
+}
+
+impl Depletion<f64> {
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> Depletion<L> {
+        Depletion {
+            capacitance: L::splat(self.capacitance),
+            half: L::splat(self.half),
+            inverse_potential: L::splat(self.inverse_potential),
+            grading: L::splat(self.grading),
+            scale: L::splat(self.scale),
+            inverse_scale: L::splat(self.inverse_scale),
+            steep: L::splat(self.steep),
+            joint: L::splat(self.joint),
+            binomial: self.binomial.map(L::splat),
+        }
     }
 }
 
