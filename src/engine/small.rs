@@ -23,7 +23,7 @@ pub struct BlockFailure {
 }
 
 /// Advances a stage by whole blocks at a constant step.
-pub trait Kernel<L>: Send {
+pub trait Kernel<L>: Send + Sync {
     /// One step a sample of `drive` (V, at the end of the step), each output's deviation from bias into `output`.
     ///
     /// # Errors

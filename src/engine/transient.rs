@@ -39,6 +39,16 @@ pub struct UniformTransient<L> {
     steps: u64,
 }
 
+impl<L: Lane> std::fmt::Debug for UniformTransient<L> {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.debug_struct("UniformTransient")
+            .field("ports", &self.bank.ports())
+            .field("step", &self.step)
+            .field("steps", &self.steps)
+            .finish_non_exhaustive()
+    }
+}
+
 impl<L: Lane> Clone for UniformTransient<L> {
     fn clone(&self) -> Self {
         UniformTransient {
