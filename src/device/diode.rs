@@ -71,6 +71,19 @@ impl DiodeLaw<f64> {
             breakdown_width,
         }
     }
+
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> DiodeLaw<L> {
+        DiodeLaw {
+            forward: self.forward.splat(),
+            breakdown: self.breakdown.map(|law| law.splat()),
+            transit_time: L::splat(self.transit_time),
+            depletion: self.depletion.splat(),
+            stores_charge: self.stores_charge,
+            breakdown_voltage: L::splat(self.breakdown_voltage),
+            breakdown_width: L::splat(self.breakdown_width),
+        }
+    }
 }
 
 impl<L: Lane> DiodeLaw<L> {

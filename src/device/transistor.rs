@@ -134,6 +134,33 @@ impl TransistorLaw<f64> {
             breakdown_voltage: p.emitter_breakdown_voltage.unwrap_or(f64::INFINITY),
         }
     }
+
+    /// The same law in every lane.
+    pub fn splat<L: Lane>(&self) -> TransistorLaw<L> {
+        let leakage = |law: &Option<Exponential<f64>>| law.map(|law| law.splat());
+        TransistorLaw {
+            forward: self.forward.splat(),
+            reverse: self.reverse.splat(),
+            emitter_leakage: leakage(&self.emitter_leakage),
+            collector_leakage: leakage(&self.collector_leakage),
+            breakdown: leakage(&self.breakdown),
+            inverse_forward_gain: L::splat(self.inverse_forward_gain),
+            inverse_reverse_gain: L::splat(self.inverse_reverse_gain),
+            inverse_forward_early: L::splat(self.inverse_forward_early),
+            inverse_reverse_early: L::splat(self.inverse_reverse_early),
+            inverse_forward_knee: L::splat(self.inverse_forward_knee),
+            inverse_reverse_knee: L::splat(self.inverse_reverse_knee),
+            has_early: self.has_early,
+            has_knee: self.has_knee,
+            forward_transit_time: L::splat(self.forward_transit_time),
+            reverse_transit_time: L::splat(self.reverse_transit_time),
+            emitter_depletion: self.emitter_depletion.splat(),
+            collector_depletion: self.collector_depletion.splat(),
+            stores_charge: self.stores_charge,
+            thermal_voltage: L::splat(self.thermal_voltage),
+            breakdown_voltage: L::splat(self.breakdown_voltage),
+        }
+    }
 }
 
 impl<L: Lane> TransistorLaw<L> {
