@@ -1,6 +1,8 @@
 //! The program against the open reference values in `tests/expected/open` (its README says how they were computed):
 //! every stage, every level.
 
+#![allow(clippy::expect_used)]
+
 use cleanswing::engine::OperatingPoint;
 use cleanswing::engine::linear::Linearised;
 use cleanswing::measure::distortion::{DistortionRequest, distortion};

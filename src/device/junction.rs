@@ -41,6 +41,10 @@ impl<L: Lane> ExponentialAnchor<L> {
 /// product `exp(v0)·expm1(v − v0)` could meet zero times infinity.
 const DEEP: f64 = -30.0;
 
+/// Below this exponent an exponential (1e-17 of its scale current) is rounding beside the current that flows the other
+/// way, −1 times the scale.
+const NOTHING: f64 = -39.0;
+
 impl Exponential<f64> {
     /// The same law in every lane.
     pub fn splat<L: Lane>(&self) -> Exponential<L> {
@@ -67,7 +71,11 @@ impl<L: Lane> Exponential<L> {
     pub fn deviation(&self, anchor: &ExponentialAnchor<L>, delta: L) -> (L, L) {
         let step = delta * self.inverse_width;
         let difference = if anchor.deep {
-            self.scale * (anchor.exponent + step).exp() - anchor.value
+            let exponent = anchor.exponent + step;
+            if exponent.largest() < NOTHING {
+                return (L::zero(), L::zero());
+            }
+            self.scale * exponent.exp() - anchor.value
         } else {
             anchor.value * step.exp_m1()
         };
@@ -75,19 +83,31 @@ impl<L: Lane> Exponential<L> {
     }
 }
 
+/// Terms of the binomial series of the depletion law near its anchor.
+const BINOMIAL_TERMS: usize = 9;
+/// Relative distance from the anchor below which that many terms reach rounding: 0.02⁹ is 5e-16.
+const BINOMIAL_REACH: f64 = 0.02;
+
 /// The depletion charge of a junction.
 #[derive(Clone, Copy, Debug)]
 pub struct Depletion<L> {
     /// Capacitance at zero bias, F.
     capacitance: L,
-    /// Junction potential φ, V.
-    potential: L,
+    /// Half the junction potential φ, V: where the law changes.
+    half: L,
+    /// 1/φ, 1/V.
+    inverse_potential: L,
     /// Grading exponent m, below 1.
     grading: L,
+    /// C·φ/(1 − m), C, and its inverse.
+    scale: L,
+    inverse_scale: L,
     /// C·2^m, the slope at the joint, F.
     steep: L,
     /// Q(φ/2), C.
     joint: L,
+    /// Binomial coefficients of (1 + u)^(1−m) from the first power on.
+    binomial: [L; BINOMIAL_TERMS],
 }
 
 /// A depletion charge at its anchor.
@@ -97,9 +117,9 @@ pub struct DepletionAnchor<L> {
     voltage: L,
     /// Charge at the anchor, C.
     charge: L,
-    /// 1 − v0/φ.
-    base: L,
-    /// (1 − v0/φ)^(1−m); 1 where the anchor lies beyond the joint.
+    /// 1/(φ·(1 − v0/φ)), 1/V.
+    inverse_base: L,
+    /// C·φ/(1 − m)·(1 − v0/φ)^(1−m), C; the joint's where the anchor lies beyond it.
     power: L,
 }
 
@@ -115,10 +135,14 @@ impl Depletion<f64> {
     pub fn splat<L: Lane>(&self) -> Depletion<L> {
         Depletion {
             capacitance: L::splat(self.capacitance),
-            potential: L::splat(self.potential),
+            half: L::splat(self.half),
+            inverse_potential: L::splat(self.inverse_potential),
             grading: L::splat(self.grading),
+            scale: L::splat(self.scale),
+            inverse_scale: L::splat(self.inverse_scale),
             steep: L::splat(self.steep),
             joint: L::splat(self.joint),
+            binomial: self.binomial.map(L::splat),
         }
     }
 }
@@ -129,12 +153,22 @@ impl<L: Lane> Depletion<L> {
         let steep = capacitance * (grading * L::splat(std::f64::consts::LN_2)).exp();
         let rest = L::one() - grading;
         let half_power = (rest * L::splat(-std::f64::consts::LN_2)).exp();
+        let mut binomial = [rest; BINOMIAL_TERMS];
+        for k in 1..BINOMIAL_TERMS {
+            let order = L::splat(k as f64);
+            binomial[k] = binomial[k - 1] * (rest - order) / (order + L::one());
+        }
+        let scale = capacitance * potential / rest;
         Depletion {
             capacitance,
-            potential,
+            half: potential * L::splat(0.5),
+            inverse_potential: L::one() / potential,
             grading,
+            scale,
+            inverse_scale: L::one() / scale,
             steep,
-            joint: capacitance * potential / rest * (L::one() - half_power),
+            joint: scale * (L::one() - half_power),
+            binomial,
         }
     }
 
@@ -145,11 +179,11 @@ impl<L: Lane> Depletion<L> {
 
     /// The anchor at `v` volts.
     pub fn anchor(&self, v: L) -> DepletionAnchor<L> {
-        let half = self.half();
+        let half = self.half;
         let low = v.min(half);
-        let base = L::one() - low / self.potential;
+        let base = L::one() - low * self.inverse_potential;
         let power = ((L::one() - self.grading) * base.ln()).exp();
-        let below = self.scale() * (L::one() - power);
+        let below = self.scale * (L::one() - power);
         let charge = L::choose(
             half.below(v),
             || self.joint + self.beyond(v - half),
@@ -158,8 +192,8 @@ impl<L: Lane> Depletion<L> {
         DepletionAnchor {
             voltage: v,
             charge,
-            base,
-            power,
+            inverse_base: self.inverse_potential / base,
+            power: self.scale * power,
         }
     }
 
@@ -167,7 +201,7 @@ impl<L: Lane> Depletion<L> {
     #[inline(always)]
     pub fn deviation(&self, anchor: &DepletionAnchor<L>, delta: L) -> (L, L) {
         let v = anchor.voltage + delta;
-        let half = self.half();
+        let half = self.half;
         let beyond = half.below(v);
         let anchored_beyond = half.below(anchor.voltage);
         let charge = L::choose(
@@ -182,7 +216,7 @@ impl<L: Lane> Depletion<L> {
             || {
                 L::choose(
                     anchored_beyond,
-                    || self.scale() * (L::one() - self.power_at(v)) - anchor.charge,
+                    || self.scale * (L::one() - self.power_at(v)) - anchor.charge,
                     || self.below_difference(anchor, delta),
                 )
             },
@@ -191,47 +225,49 @@ impl<L: Lane> Depletion<L> {
             beyond,
             || {
                 let x = v - half;
-                self.steep * (L::one() + L::splat(2.0) * self.grading * x / self.potential)
+                self.steep * (L::one() + L::splat(2.0) * self.grading * x * self.inverse_potential)
             },
             || {
                 // C·(1 − v/φ)^(−m) = C·power/base, with the power recovered from the charge just found
-                let power = L::one() - (anchor.charge + charge) / self.scale();
-                self.capacitance * power / (L::one() - v / self.potential)
+                let power = L::one() - (anchor.charge + charge) * self.inverse_scale;
+                self.capacitance * power / (L::one() - v * self.inverse_potential)
             },
         );
         (charge, capacitance)
     }
 
     #[inline(always)]
-    fn half(&self) -> L {
-        self.potential * L::splat(0.5)
-    }
-
-    #[inline(always)]
-    fn scale(&self) -> L {
-        self.capacitance * self.potential / (L::one() - self.grading)
-    }
-
-    #[inline(always)]
     fn power_at(&self, v: L) -> L {
-        ((L::one() - self.grading) * (L::one() - v / self.potential).ln()).exp()
+        ((L::one() - self.grading) * (L::one() - v * self.inverse_potential).ln()).exp()
     }
 
     #[inline(always)]
     fn beyond(&self, x: L) -> L {
-        self.steep * x * (L::one() + self.grading * x / self.potential)
+        self.steep * x * (L::one() + self.grading * x * self.inverse_potential)
     }
 
     #[inline(always)]
     fn beyond_difference(&self, anchor: &DepletionAnchor<L>, delta: L) -> L {
-        let x0 = anchor.voltage - self.half();
-        self.steep * delta * (L::one() + self.grading * (x0 + x0 + delta) / self.potential)
+        let x0 = anchor.voltage - self.half;
+        self.steep * delta * (L::one() + self.grading * (x0 + x0 + delta) * self.inverse_potential)
     }
 
     #[inline(always)]
     fn below_difference(&self, anchor: &DepletionAnchor<L>, delta: L) -> L {
-        let logarithm = (-delta / (self.potential * anchor.base)).ln_1p();
-        -self.scale() * anchor.power * ((L::one() - self.grading) * logarithm).exp_m1()
+        let u = -delta * anchor.inverse_base;
+        let near = u.abs().below(L::splat(BINOMIAL_REACH));
+        -anchor.power
+            * L::choose(
+                near,
+                || {
+                    let mut sum = self.binomial[BINOMIAL_TERMS - 1];
+                    for coefficient in self.binomial[..BINOMIAL_TERMS - 1].iter().rev() {
+                        sum = sum * u + *coefficient;
+                    }
+                    sum * u
+                },
+                || ((L::one() - self.grading) * u.ln_1p()).exp_m1(),
+            )
     }
 }
 

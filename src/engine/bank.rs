@@ -42,6 +42,12 @@ impl JunctionLimits {
         }
     }
 
+    /// 1/(2·width), by which the square of a correction becomes what it leaves over.
+    #[inline(always)]
+    pub fn half_inverse_width(&self) -> f64 {
+        0.5 / self.width
+    }
+
     /// The forward voltage from which a junction counts as on (the region rule of the project's definitions): the
     /// smaller of 0.3 V and the voltage of max(1 nA, 10·Is).
     pub fn on_voltage(&self) -> f64 {
@@ -213,6 +219,44 @@ impl<L: Lane> PortBank<L> {
             for (k, single) in singles.iter().enumerate() {
                 target[paired + k] += source[paired + k] * *single;
             }
+        }
+    }
+
+    /// [`PortBank::add_times_blocks`] for a number of ports known to the compiler.
+    #[inline(always)]
+    pub fn add_times_blocks_small<const P: usize>(
+        &self,
+        left: &[[L; P]; P],
+        blocks: &[L],
+        matrix: &mut [[L; P]; P],
+    ) {
+        let transistors = self.transistors.len();
+        for (k, block) in blocks[..4 * transistors].chunks_exact(4).enumerate() {
+            for (target, source) in matrix.iter_mut().zip(left) {
+                let (a, b) = (source[2 * k], source[2 * k + 1]);
+                target[2 * k] += a * block[0] + b * block[2];
+                target[2 * k + 1] += a * block[1] + b * block[3];
+            }
+        }
+        for (port, single) in (2 * transistors..P).zip(&blocks[4 * transistors..]) {
+            for (target, source) in matrix.iter_mut().zip(left) {
+                target[port] += source[port] * *single;
+            }
+        }
+    }
+
+    /// The block-diagonal B of [`PortBank::add_times_blocks`] written out into a zero matrix.
+    #[inline(always)]
+    pub fn expand_blocks<const P: usize>(&self, blocks: &[L], matrix: &mut [[L; P]; P]) {
+        let transistors = self.transistors.len();
+        for (k, block) in blocks[..4 * transistors].chunks_exact(4).enumerate() {
+            matrix[2 * k][2 * k] = block[0];
+            matrix[2 * k][2 * k + 1] = block[1];
+            matrix[2 * k + 1][2 * k] = block[2];
+            matrix[2 * k + 1][2 * k + 1] = block[3];
+        }
+        for (port, single) in (2 * transistors..P).zip(&blocks[4 * transistors..]) {
+            matrix[port][port] = *single;
         }
     }
 

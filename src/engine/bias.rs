@@ -181,7 +181,7 @@ impl DcProblem {
     fn all_solutions(&self, drives: &[f64]) -> Result<Vec<Vec<f64>>, EngineError> {
         let forward = |port: usize| 0.6f64.min(0.9 * self.limits[port].knee);
         let alternate = |port: usize, on: bool| if on { forward(port) } else { -3.0 };
-        let emitter = |port: usize| port % 2 == 0;
+        let emitter = |port: usize| port.is_multiple_of(2);
         let starts: [Vec<f64>; 4] = [
             (0..self.ports())
                 .map(|port| alternate(port, emitter(port)))
@@ -189,7 +189,7 @@ impl DcProblem {
             vec![0.0; self.ports()],
             (0..self.ports()).map(forward).collect(),
             (0..self.ports())
-                .map(|port| alternate(port, port % 4 == 0))
+                .map(|port| alternate(port, port.is_multiple_of(4)))
                 .collect(),
         ];
         let mut found: Vec<Vec<f64>> = Vec::new();

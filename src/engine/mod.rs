@@ -9,6 +9,7 @@ pub mod error;
 pub mod linear;
 pub mod periodic;
 pub mod scheme;
+pub mod small;
 pub mod step;
 pub mod transient;
 

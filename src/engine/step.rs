@@ -330,12 +330,13 @@ impl<L: Lane> StepSolver<L> {
     }
 
     /// Carry sensitivities over the step just solved: `map` holds ∂(start)/∂(something), one column a something and
-    /// one row a state, and receives ∂(end)/∂(the same).
+    /// one row a state, and receives ∂(end)/∂(the same). `outputs`, where given, receives ∂(output at each stage).
     pub fn carry_sensitivity(
         &mut self,
         bank: &PortBank<L>,
         reduction: &Reduction<L>,
         map: &mut Matrix<L>,
+        mut outputs: Option<&mut Matrix<L>>,
     ) {
         let ports = bank.ports();
         let stages = reduction.stages;
@@ -387,6 +388,24 @@ impl<L: Lane> StepSolver<L> {
                     for (port, value) in moved.into_iter().enumerate() {
                         map[(linear + port, column)] = value;
                     }
+                }
+            }
+            if let Some(outputs) = &mut outputs {
+                for stage in 0..stages {
+                    let mut value = L::zero();
+                    for (entry, state) in reduction.output_from_state.row(stage).iter().zip(&start)
+                    {
+                        value += *entry * *state;
+                    }
+                    for (entry, current) in reduction
+                        .output_from_current
+                        .row(stage)
+                        .iter()
+                        .zip(&injected)
+                    {
+                        value -= *entry * *current;
+                    }
+                    outputs[(stage, column)] = value;
                 }
             }
             for row in 0..linear {

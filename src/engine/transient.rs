@@ -9,6 +9,7 @@ use super::bias::OperatingPoint;
 use super::error::EngineError;
 use super::linear::Linearised;
 use super::scheme::{BDF3, Radau, backward_difference};
+use super::small::{Kernel, kernel_for};
 use super::step::{Acceptance, State, StepSolver, clamp_prediction};
 use crate::network::elements::EMF;
 use crate::network::{Network, Reduction};
@@ -21,8 +22,9 @@ const LEFTOVER: f64 = 2.5e-10;
 const HIGHEST_QUALITY: f64 = 7.0;
 
 /// Third-order backward differences at a constant step, from the bias, in every lane.
-#[derive(Clone, Debug)]
 pub struct UniformTransient<L> {
+    /// The same step with sizes known to the compiler, where there is one; then the rest below stays untouched.
+    kernel: Option<Box<dyn Kernel<L>>>,
     bank: PortBank<L>,
     reduction: Reduction<L>,
     stepper: StepSolver<L>,
@@ -37,6 +39,34 @@ pub struct UniformTransient<L> {
     steps: u64,
 }
 
+impl<L: Lane> std::fmt::Debug for UniformTransient<L> {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.debug_struct("UniformTransient")
+            .field("ports", &self.bank.ports())
+            .field("step", &self.step)
+            .field("steps", &self.steps)
+            .finish_non_exhaustive()
+    }
+}
+
+impl<L: Lane> Clone for UniformTransient<L> {
+    fn clone(&self) -> Self {
+        UniformTransient {
+            kernel: self.kernel.as_ref().map(|kernel| kernel.duplicate()),
+            bank: self.bank.clone(),
+            reduction: self.reduction.clone(),
+            stepper: self.stepper.clone(),
+            history: self.history.clone(),
+            voltages: self.voltages.clone(),
+            weighted: self.weighted.clone(),
+            v: self.v.clone(),
+            names: self.names.clone(),
+            step: self.step,
+            steps: self.steps,
+        }
+    }
+}
+
 impl UniformTransient<f64> {
     /// Steps of `step` seconds for `network` from `point`.
     ///
@@ -49,6 +79,7 @@ impl UniformTransient<f64> {
             Reduction::of(network, EMF, &scheme).map_err(|_| EngineError::Undetermined)?;
         let rest = State::at_bias(network.linear_states(), bank.ports());
         Ok(UniformTransient {
+            kernel: kernel_for(&bank, &reduction, LEFTOVER),
             stepper: StepSolver::new(&bank, 1),
             history: [rest.clone(), rest.clone(), rest.clone()],
             voltages: std::array::from_fn(|_| vec![0.0; bank.ports()]),
@@ -70,8 +101,29 @@ impl<L: Lane> UniformTransient<L> {
     ///
     /// # Errors
     /// Where the step cannot be solved.
-    #[inline(always)]
     pub fn advance(&mut self, drive: L) -> Result<L, EngineError> {
+        if self.kernel.is_some() {
+            let mut output = [L::zero()];
+            self.advance_block(&[drive], &mut output)?;
+            return Ok(output[0]);
+        }
+        self.advance_generally(drive)
+    }
+
+    /// The same steps by the general path, whatever the number of ports.
+    pub fn general(mut self) -> Self {
+        self.kernel = None;
+        self
+    }
+
+    fn failure(&self, port: usize) -> EngineError {
+        EngineError::NoStep {
+            time: self.steps as f64 * self.step,
+            part: self.names.get(port).cloned().unwrap_or_default(),
+        }
+    }
+
+    fn advance_generally(&mut self, drive: L) -> Result<L, EngineError> {
         self.weigh_history();
         self.predict();
         let solved = self.stepper.solve(
@@ -102,10 +154,7 @@ impl<L: Lane> UniformTransient<L> {
         self.voltages[0].copy_from_slice(&self.v);
         self.steps += 1;
         if !output[0].is_finite() {
-            return Err(EngineError::NoStep {
-                time: self.steps as f64 * self.step,
-                part: self.names.first().cloned().unwrap_or_default(),
-            });
+            return Err(self.failure(0));
         }
         Ok(output[0])
     }
@@ -115,8 +164,14 @@ impl<L: Lane> UniformTransient<L> {
     /// # Errors
     /// Where a step cannot be solved.
     pub fn advance_block(&mut self, drive: &[L], output: &mut [L]) -> Result<(), EngineError> {
+        if let Some(kernel) = &mut self.kernel {
+            let solved = kernel.advance_block(drive, output);
+            let done = solved.map_or_else(|failure| failure.sample, |()| drive.len());
+            self.steps += done as u64;
+            return solved.map_err(|failure| self.failure(failure.port));
+        }
         for (drive, output) in drive.iter().zip(output) {
-            *output = self.advance(*drive)?;
+            *output = self.advance_generally(*drive)?;
         }
         Ok(())
     }

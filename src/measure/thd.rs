@@ -2,18 +2,19 @@
 //!
 //! `THD = sqrt(Σ Hn², n = 2…N)/H1`, N = floor(bandwidth/f·(1 + 1e-9)); relative to the total it is
 //! `sqrt(Σ Hn²)/sqrt(H1² + Σ Hn²)` (the form of IEC 60268-3, from memory). The first harmonics are fitted to the
-//! collocation points; what lies above them comes from the discrete Fourier transform of the collocation polynomial
-//! on an even grid, and only where it matters.
+//! collocation points. What lies above them matters in hard clipping only: the collocation polynomials themselves are
+//! integrated against each further harmonic exactly, and where harmonics run into the hundreds the rest comes from the
+//! discrete Fourier transform of the polynomials on an even grid.
 
 use super::report::Harmonic;
 use crate::engine::PeriodicSolution;
-use crate::numeric::fourier::{Spectrum, UnevenPeriod};
+use crate::numeric::fourier::{Moments, Spectrum, UnevenPeriod, oscillating_moments};
 use rustfft::{FftPlanner, num_complex::Complex};
 
 /// Harmonics always reported.
 pub const REPORTED: usize = 20;
-/// Harmonics fitted one by one before the transform takes over.
-const FITTED: usize = 64;
+/// Harmonics integrated one by one before the transform takes over.
+const INTEGRATED: usize = 512;
 /// Harmonics this far below H1 are rounding.
 pub const FLOOR: f64 = 3e-13;
 /// A share of the distortion power that no longer moves the THD's seventh digit.
@@ -56,8 +57,8 @@ pub fn distortion(
 ) -> Distortion {
     let highest = highest_harmonic(bandwidth, frequency);
     let points = UnevenPeriod::new(&solution.phases, solution.weights.clone());
-    let mut spectrum = points.spectrum(&solution.outputs, REPORTED);
-    let power = distortion_power(solution, &points, &mut spectrum, highest);
+    let spectrum = points.spectrum(&solution.outputs, REPORTED);
+    let power = distortion_power(solution, &spectrum, highest);
     let fundamental = spectrum.harmonics[0].peak() / std::f64::consts::SQRT_2;
     let rms = solution.rms();
     let thd = if highest < 2 {
@@ -80,12 +81,7 @@ pub fn distortion(
 }
 
 /// Σ Hn² for n = 2…`highest`, V².
-fn distortion_power(
-    solution: &PeriodicSolution,
-    points: &UnevenPeriod,
-    spectrum: &mut Spectrum,
-    highest: usize,
-) -> f64 {
+fn distortion_power(solution: &PeriodicSolution, spectrum: &Spectrum, highest: usize) -> f64 {
     let squares = |spectrum: &Spectrum, up_to: usize| -> f64 {
         spectrum
             .harmonics
@@ -101,20 +97,50 @@ fn distortion_power(
     if spectrum.residual_power <= NEGLIGIBLE * squares(spectrum, REPORTED) {
         return squares(spectrum, REPORTED);
     }
-    points.extend(spectrum, FITTED.min(highest));
-    let fitted = squares(spectrum, FITTED.min(highest));
-    if highest <= FITTED || spectrum.residual_power <= NEGLIGIBLE * fitted {
-        return fitted;
-    }
     if highest == usize::MAX {
-        return fitted + spectrum.residual_power;
+        return squares(spectrum, REPORTED) + spectrum.residual_power;
     }
-    fitted + power_between(solution, FITTED + 1, highest)
+    let near = highest.min(INTEGRATED);
+    let mut power = squares(spectrum, REPORTED) + integrated_power(solution, REPORTED + 1, near);
+    if highest > near {
+        power += power_between(solution, near + 1, highest);
+    }
+    power
+}
+
+/// Σ Hn² for n = `from`…`to`, each coefficient the exact integral of the collocation polynomials, V².
+fn integrated_power(solution: &PeriodicSolution, from: usize, to: usize) -> f64 {
+    let mut sums = vec![Complex::new(0.0, 0.0); to + 1 - from];
+    let mut moments: Vec<(f64, Vec<Moments>)> = Vec::new();
+    for (start, length, cubic) in solution.cubics() {
+        // a dyadic mesh has a handful of lengths
+        let known = moments
+            .iter()
+            .position(|(known, _)| *known == length)
+            .unwrap_or_else(|| {
+                let angle = |n: usize| std::f64::consts::PI * n as f64 * length;
+                moments.push((
+                    length,
+                    (from..=to).map(|n| oscillating_moments(angle(n))).collect(),
+                ));
+                moments.len() - 1
+            });
+        let middle = std::f64::consts::TAU * (start + 0.5 * length);
+        let turn = Complex::from_polar(1.0, -middle);
+        let mut phase = Complex::from_polar(length, -middle * from as f64);
+        for (sum, moment) in sums.iter_mut().zip(&moments[known].1) {
+            let real = cubic[0] * moment[0].0 + cubic[2] * moment[2].0;
+            let imaginary = cubic[1] * moment[1].1 + cubic[3] * moment[3].1;
+            *sum += phase * Complex::new(real, imaginary);
+            phase *= turn;
+        }
+    }
+    sums.iter().map(|half| 2.0 * half.norm_sqr()).sum()
 }
 
 /// Σ Hn² for n = `from`…`to` from an even grid, V².
 fn power_between(solution: &PeriodicSolution, from: usize, to: usize) -> f64 {
-    let size = (8 * to).next_power_of_two().clamp(1024, LARGEST_GRID);
+    let size = (16 * to).next_power_of_two().clamp(1 << 14, LARGEST_GRID);
     let spectrum = even_spectrum(solution, size);
     spectrum[from..=to.min(size / 2 - 1)]
         .iter()

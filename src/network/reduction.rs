@@ -82,7 +82,11 @@ impl Reduction<f64> {
     ///
     /// # Errors
     /// Where the equations of the linear part are singular.
-    pub fn of(network: &Network, drive: usize, scheme: &Scheme) -> Result<Self, UndeterminedNetwork> {
+    pub fn of(
+        network: &Network,
+        drive: usize,
+        scheme: &Scheme,
+    ) -> Result<Self, UndeterminedNetwork> {
         let assembly = Assembly::of(network, PORT_CONDUCTANCE);
         let system = StageSystem::new(network, &assembly, scheme, drive)?;
         let ports = assembly.port_probes(network);
@@ -90,7 +94,11 @@ impl Reduction<f64> {
         let factored = system.matrix().lu();
         let solve = |right: DMatrix<f64>| {
             let solution = factored.solve(&right).ok_or(UndeterminedNetwork)?;
-            solution.iter().all(|value| value.is_finite()).then_some(solution).ok_or(UndeterminedNetwork)
+            solution
+                .iter()
+                .all(|value| value.is_finite())
+                .then_some(solution)
+                .ok_or(UndeterminedNetwork)
         };
         let from_state = solve(system.state_columns())?;
         let from_drive = solve(system.drive_columns())?;
@@ -100,7 +108,9 @@ impl Reduction<f64> {
             stages: scheme.stages(),
             ports: ports.len(),
             rates: scheme.rates.clone(),
-            history_rates: (0..scheme.stages()).map(|stage| scheme.history_rate(stage)).collect(),
+            history_rates: (0..scheme.stages())
+                .map(|stage| scheme.history_rate(stage))
+                .collect(),
             ports_from_charge: system.act_on_charges(&ports_from_current, ports.len()),
             ports_from_state: system.read(&ports, &from_state, false),
             ports_from_drive: system.read(&ports, &from_drive, true),
@@ -173,14 +183,23 @@ impl<'a> StageSystem<'a> {
         let times = if network.linear_states() == 0 {
             Matrix::zero(stages, stages)
         } else {
-            Factored::of(&scheme.rates).map_err(|_| UndeterminedNetwork)?.solve_matrix(&Matrix::identity(stages))
+            Factored::of(&scheme.rates)
+                .map_err(|_| UndeterminedNetwork)?
+                .solve_matrix(&Matrix::identity(stages))
         };
         let capacitor_probes = network
             .capacitors
             .iter()
             .map(|capacitor| assembly.probe(network, capacitor.pins[0], capacitor.pins[1]))
             .collect();
-        Ok(StageSystem { network, assembly, scheme, drive, times, capacitor_probes })
+        Ok(StageSystem {
+            network,
+            assembly,
+            scheme,
+            drive,
+            times,
+            capacitor_probes,
+        })
     }
 
     /// Unknowns of one stage.
@@ -291,7 +310,10 @@ impl<'a> StageSystem<'a> {
         for stage in 0..self.stages() {
             for (port, probe) in ports.iter().enumerate() {
                 right
-                    .view_mut((stage * self.size(), stage * ports.len() + port), (self.assembly.size(), 1))
+                    .view_mut(
+                        (stage * self.size(), stage * ports.len() + port),
+                        (self.assembly.size(), 1),
+                    )
                     .copy_from(&probe.unknowns);
             }
         }
@@ -305,7 +327,8 @@ impl<'a> StageSystem<'a> {
             for (k, probe) in probes.iter().enumerate() {
                 let row = stage * probes.len() + k;
                 for column in 0..solution.ncols() {
-                    let unknowns = solution.view((stage * self.size(), column), (self.assembly.size(), 1));
+                    let unknowns =
+                        solution.view((stage * self.size(), column), (self.assembly.size(), 1));
                     result[(row, column)] = unknowns.dot(&probe.unknowns);
                 }
                 if direct {
@@ -326,7 +349,9 @@ impl<'a> StageSystem<'a> {
             for k in 0..capacitors {
                 let row = self.capacitor_row(k);
                 let moved: f64 = (0..self.stages())
-                    .map(|stage| self.times[(last, stage)] * solution[(stage * self.size() + row, column)])
+                    .map(|stage| {
+                        self.times[(last, stage)] * solution[(stage * self.size() + row, column)]
+                    })
                     .sum();
                 result[(k, column)] = moved + if carried && k == column { 1.0 } else { 0.0 };
             }

@@ -87,21 +87,6 @@ impl UnevenPeriod {
         spectrum
     }
 
-    /// More harmonics of what a spectrum leaves over, `from`…`to`, taken out of its residual.
-    pub fn extend(&self, spectrum: &mut Spectrum, to: usize) {
-        spectrum
-            .harmonics
-            .resize(to.max(spectrum.harmonics.len()), Coefficient::default());
-        self.refine(spectrum, to);
-        self.refine(spectrum, to);
-        spectrum.residual_power = self
-            .weights
-            .iter()
-            .zip(&spectrum.residual)
-            .map(|(w, r)| w * r * r)
-            .sum();
-    }
-
     /// Read mean and harmonics 1…`orders` of the residual and move them from it into the coefficients.
     fn refine(&self, spectrum: &mut Spectrum, orders: usize) {
         let residual = &mut spectrum.residual;
@@ -144,6 +129,43 @@ impl UnevenPeriod {
     }
 }
 
+/// The first four moments of an oscillation, as (real, imaginary).
+pub type Moments = [(f64, f64); 4];
+
+/// Moments `½·∫ τ^m·e^(−iθτ) dτ` over τ in [−1, 1] for m = 0…3, as (real, imaginary).
+///
+/// By parts from m = 0 upwards for large θ, where that is stable, and by the power series for small θ
+/// (L. N. G. Filon, "On a quadrature formula for trigonometric integrals", Proc. R. Soc. Edinburgh 49, 1928).
+pub fn oscillating_moments(theta: f64) -> Moments {
+    if theta.abs() < 2.0 {
+        return std::array::from_fn(|power| series_moment(power, theta));
+    }
+    let (sine, cosine) = theta.sin_cos();
+    // even moments are real, odd ones imaginary
+    let m0 = sine / theta;
+    let m1 = (cosine - m0) / theta;
+    let m2 = (sine + 2.0 * m1) / theta;
+    let m3 = (cosine - 3.0 * m2) / theta;
+    [(m0, 0.0), (0.0, m1), (m2, 0.0), (0.0, m3)]
+}
+
+fn series_moment(power: usize, theta: f64) -> (f64, f64) {
+    // Σ (−iθ)^k/k!·½·∫ τ^(m+k) dτ; only even m + k remain, each 1/(m + k + 1)
+    let mut sum = 0.0;
+    let mut term = if power.is_multiple_of(2) { 1.0 } else { -theta };
+    let mut k = power % 2;
+    while k < 40 {
+        sum += term / (power + k + 1) as f64;
+        term *= -theta * theta / ((k + 1) * (k + 2)) as f64;
+        k += 2;
+    }
+    if power.is_multiple_of(2) {
+        (sum, 0.0)
+    } else {
+        (0.0, sum)
+    }
+}
+
 /// Inner product with four running sums, which the compiler can keep in one vector register.
 fn dot(a: &[f64], b: &[f64]) -> f64 {
     let mut sums = [0.0; 4];
@@ -161,6 +183,17 @@ fn dot(a: &[f64], b: &[f64]) -> f64 {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn both_forms_of_the_moments_agree_where_they_meet() {
+        for theta in [2.0f64, 2.5, 4.0] {
+            for (power, moment) in oscillating_moments(theta).into_iter().enumerate() {
+                let series = series_moment(power, theta);
+                // the series loses a digit or two by cancellation here
+                assert!((moment.0 - series.0).abs() < 1e-14 && (moment.1 - series.1).abs() < 1e-14);
+            }
+        }
+    }
 
     #[test]
     fn harmonics_on_uneven_points_are_found_to_rounding() {

@@ -53,7 +53,7 @@ fn distortion_json_has_every_promised_key_and_twenty_harmonics() {
 #[test]
 fn one_level_written_in_five_ways_gives_one_answer() {
     let bench = Bench::with_stage("a_plain_common_emitter");
-    let typed = "20mV,28.2842712474619mVpk,56.5685424949238mVpp,-33.97940008672037dBV,-31.760913590555874dBu";
+    let typed = "20mV,28.2842712474619mVpk,56.5685424949238mVpp,-33.97940008672037dBV,-31.760912590556813dBu";
     let points = points(
         &bench
             .run(&format!("distortion stage.toml --level {typed} --json"))

@@ -83,7 +83,7 @@ fn all_faults_of_a_file_are_reported_at_once() {
     let parts = "R1 = { resistor = \"-1k\", pins = [\"in\", \"gnd\"] }\n\
                  Q1 = { npn = \"npn-small-signl\", collector = \"vcc\", base = \"out\", emitter = \"gnd\" }\n\
                  R3 = { resistor = \"1k\", pins = [\"out\", \"nowhere\"] }\n\
-                 R4 = { resistr = \"1k\", pins = [\"in\", \"gnd\"] }";
+                 R4 = { resistor = \"1k\", pins = [\"in\", \"gnd\"], tolerence = \"5%\" }";
     bench.write("stage.toml", stage_with(parts).as_bytes());
     let run = bench.run("bias stage.toml").ends_with(2);
     for place in [

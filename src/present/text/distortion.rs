@@ -13,16 +13,20 @@ const SHOWN: [usize; 4] = [2, 3, 4, 5];
 
 /// Distortion against level, one table for each run of points at one frequency.
 pub fn distortion(report: &DistortionReport) -> String {
-    let mut text = heading(&report.title, &report.conditions);
+    let text = heading(&report.title, &report.conditions) + &tables(report);
+    let gap = if report.cautions.is_empty() { "" } else { "\n" };
+    text + gap + &cautions(&report.cautions)
+}
+
+/// The tables alone, for a page that has stated the conditions already.
+pub fn tables(report: &DistortionReport) -> String {
+    let mut text = String::new();
     for points in report.points.chunk_by(|a, b| a.frequency == b.frequency) {
         text += &format!("\n{}\n", definition(&points[0]));
         text += &table(points);
         text += &notes(points);
     }
-    if !report.cautions.is_empty() {
-        text.push('\n');
-    }
-    text + &cautions(&report.cautions)
+    text
 }
 
 /// Frequency and form of the THD: `1 kHz: THD relative to H1, harmonics 2..80, 80 kHz`.

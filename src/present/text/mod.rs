@@ -2,10 +2,14 @@
 
 mod bias;
 mod distortion;
+mod drives;
+mod listen;
 
 pub use bias::bias;
-pub use distortion::distortion;
 pub(super) use distortion::{bandwidth, definition};
+pub use distortion::{distortion, tables as distortion_tables};
+pub use drives::{DrivenSound, driven_sounds};
+pub use listen::listen;
 
 use super::conditions;
 use super::format::plain;
