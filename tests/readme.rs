@@ -257,3 +257,31 @@ fn a_command_owns_the_lines_up_to_the_next_one() {
     );
     assert_eq!(found[1].command, "cleanswing b");
 }
+
+/// `CLEANSWING_README=write` puts the present picture in its place.
+#[test]
+fn the_picture_of_the_page_is_what_its_command_draws() {
+    let folder = tempfile::tempdir().unwrap();
+    for words in [
+        "start common-emitter-split -o preamp.toml",
+        "distortion preamp.toml --plot thd.svg",
+    ] {
+        let run = Command::new(env!("CARGO_BIN_EXE_cleanswing"))
+            .args(words.split(' '))
+            .current_dir(folder.path())
+            .output()
+            .unwrap();
+        assert!(run.status.success(), "{words}");
+    }
+    let kept = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/expected/readme/thd.svg");
+    let drawn = fs::read_to_string(folder.path().join("thd.svg")).unwrap();
+    if std::env::var("CLEANSWING_README").is_ok_and(|v| v == "write") {
+        fs::write(kept, drawn).unwrap();
+        return;
+    }
+    assert!(
+        fs::read_to_string(&kept).unwrap() == drawn,
+        "{} is not what the program draws; see the top of this file",
+        kept.display()
+    );
+}

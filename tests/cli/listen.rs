@@ -219,3 +219,157 @@ fn more_oversampling_changes_a_clean_rendering_by_next_to_nothing() {
     let decibels = 10.0 * (energy(&off) / energy(&fine)).log10();
     assert!(decibels < -80.0, "8x differs from 32x by {decibels:.1} dB");
 }
+
+fn peak(bench: &Bench, name: &str) -> f64 {
+    let mut reader = WavReader::open(bench.path(name)).unwrap();
+    reader.samples::<f32>().fold(0.0, |peak, sample| {
+        peak.max(f64::from(sample.unwrap()).abs())
+    })
+}
+
+#[test]
+fn without_options_the_full_scale_is_assumed_and_the_output_fitted() {
+    let bench = bench(1);
+    bench
+        .run("listen stage.toml in.wav -o out.wav --format f32")
+        .ends_with(0)
+        .says("1 V peak (assumed")
+        .says("fit")
+        .says("8 times oversampled (384 kHz)")
+        .says("times real time");
+    // The true peak lies at -1 dBTP, 0.891; the samples of a clipped 440 Hz tone pass close by it.
+    let found = peak(&bench, "out.wav");
+    assert!((0.85..0.8913).contains(&found), "{found}");
+}
+
+#[test]
+fn the_internal_rate_follows_the_files_rate_unless_stated() {
+    let bench = bench(1);
+    let mut slow = tone(1);
+    slow[24..28].copy_from_slice(&44_100_u32.to_le_bytes());
+    slow[28..32].copy_from_slice(&88_200_u32.to_le_bytes());
+    bench.write("slow.wav", &slow);
+    bench
+        .run(&format!("listen stage.toml slow.wav -o a.wav {WORDS}"))
+        .ends_with(0)
+        .says("9 times oversampled (396.9 kHz)");
+    bench
+        .run(&format!(
+            "listen stage.toml slow.wav -o b.wav {WORDS} --oversample 2"
+        ))
+        .ends_with(0)
+        .says("2 times oversampled (88.2 kHz)");
+}
+
+#[test]
+fn a_full_scale_in_dbu_is_the_rms_of_a_full_scale_sine() {
+    let bench = bench(1);
+    // -20 dBu is 77.46 mV rms, 109.545 mV peak.
+    for (name, words) in [
+        ("a", "-20dBu"),
+        ("b", "109.54451mVpk"),
+        ("c", "77.459667mV"),
+    ] {
+        let words = format!("--full-scale {words} --output-full-scale 10Vpk --format f32");
+        bench
+            .run(&format!("listen stage.toml in.wav -o {name}.wav {words}"))
+            .ends_with(0);
+    }
+    let peaks = ["a.wav", "b.wav", "c.wav"].map(|name| peak(&bench, name));
+    // Eight digits were typed, and samples are stored in 24 bits.
+    for other in &peaks[1..] {
+        assert!((other / peaks[0] - 1.0).abs() < 3e-7, "{peaks:?}");
+    }
+}
+
+#[test]
+fn a_silent_file_comes_out_silent_and_is_told() {
+    let bench = bench(1);
+    let mut silent = tone(1);
+    silent[44..].fill(0);
+    bench.write("silent.wav", &silent);
+    bench
+        .run("listen stage.toml silent.wav -o out.wav --format f32")
+        .ends_with(0)
+        .says("caution: the input is silent");
+    assert_eq!(peak(&bench, "out.wav"), 0.0);
+}
+
+#[test]
+fn an_offset_and_a_clipped_output_are_told() {
+    let bench = bench(1);
+    let mut shifted = tone(1);
+    for sample in shifted[44..].chunks_exact_mut(2) {
+        let value = i16::from_le_bytes([sample[0], sample[1]]) + 6000;
+        sample.copy_from_slice(&value.to_le_bytes());
+    }
+    bench.write("shifted.wav", &shifted);
+    bench
+        .run(&format!("listen stage.toml shifted.wav -o out.wav {WORDS}"))
+        .ends_with(0)
+        .says("DC offset of 18.");
+    bench
+        .run("listen stage.toml in.wav -o out.wav --overwrite --full-scale 1Vpk --output-full-scale 1Vpk")
+        .ends_with(0)
+        .says("samples were held at digital full scale");
+    // A float keeps what lies beyond full scale, and says so.
+    bench
+        .run("listen stage.toml in.wav -o float.wav --format f32 --full-scale 1Vpk --output-full-scale 1Vpk")
+        .ends_with(0)
+        .says("passes full scale");
+    assert!(peak(&bench, "float.wav") > 1.0);
+}
+
+#[test]
+fn a_pipe_is_refused_where_a_sound_file_is_needed() {
+    let bench = bench(1);
+    bench
+        .run("listen stage.toml - -o out.wav")
+        .ends_with(2)
+        .says("ordinary file");
+    bench
+        .run("listen stage.toml in.wav -o -")
+        .ends_with(2)
+        .says("ordinary file");
+    assert_eq!(bench.names(), ["in.wav", "stage.toml"]);
+}
+
+#[cfg(unix)]
+#[test]
+fn ctrl_c_leaves_no_half_file_and_ends_with_130() {
+    let bench = Bench::with_stage("b_split_emitter");
+    let spec = WavSpec {
+        channels: 1,
+        sample_rate: RATE,
+        bits_per_sample: 16,
+        sample_format: SampleFormat::Int,
+    };
+    let mut writer = WavWriter::create(bench.path("long.wav"), spec).unwrap();
+    for frame in 0..RATE * 120 {
+        writer
+            .write_sample((8000.0 * (0.05 * f64::from(frame)).sin()) as i16)
+            .unwrap();
+    }
+    writer.finalize().unwrap();
+    let mut child = std::process::Command::new(env!("CARGO_BIN_EXE_cleanswing"))
+        .args(["listen", "stage.toml", "long.wav", "-o", "out.wav"])
+        .current_dir(bench.path("."))
+        .stderr(std::process::Stdio::null())
+        .spawn()
+        .unwrap();
+    // Two minutes of sound take seconds; its temporary appears at once.
+    for _ in 0..500 {
+        if bench.names().len() > 2 {
+            break;
+        }
+        std::thread::sleep(std::time::Duration::from_millis(10));
+    }
+    assert!(bench.names().len() > 2, "rendering did not begin");
+    let signalled = std::process::Command::new("kill")
+        .args(["-INT", &child.id().to_string()])
+        .status()
+        .unwrap();
+    assert!(signalled.success());
+    assert_eq!(child.wait().unwrap().code(), Some(130));
+    assert_eq!(bench.names(), ["long.wav", "stage.toml"]);
+}

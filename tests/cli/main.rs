@@ -5,6 +5,7 @@
 #![allow(clippy::unwrap_used, clippy::expect_used)] // helpers of tests, which the lint counts as code
 
 mod bias;
+mod demo;
 mod distortion;
 mod faults;
 mod help;

@@ -125,7 +125,7 @@ mod tests {
     #[test]
     fn a_loud_and_a_quiet_sound_become_equally_loud_below_full_scale() {
         // Of equal peak, half the time silent and never: the mean power of the second is larger.
-        let steady = sine(RATE, 1000.0, -20.0, 96_000);
+        let steady = sine(RATE, 1000.0, -20.0, 96_000).unwrap();
         let mut broken: Vec<f64> = steady.iter().map(|x| 50.0 * x).collect();
         broken
             .iter_mut()

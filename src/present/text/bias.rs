@@ -135,9 +135,18 @@ fn gain((magnitude, phase): (f64, f64)) -> String {
         Some(gain_db) => format!(
             "gain at 1 kHz, EMF to output: {} dB ({} times), phase {phase:.1}°\n",
             or_floor(Some(gain_db), 2),
-            measured(magnitude, "").trim_end(),
+            times(magnitude),
         ),
         None => "gain at 1 kHz, EMF to output: none\n".to_string(),
+    }
+}
+
+/// A ratio with four digits and no prefix: `14.70`, `0.8484`, `1.573e-5`.
+fn times(ratio: f64) -> String {
+    let power = ratio.log10().floor() as i32;
+    match power {
+        -3..=3 => format!("{ratio:.*}", (3 - power) as usize),
+        _ => format!("{ratio:.3e}"),
     }
 }
 
@@ -170,6 +179,12 @@ mod tests {
             "{text}"
         );
         assert!(text.contains("up not limited, down not limited"), "{text}");
+    }
+
+    #[test]
+    fn a_gain_is_a_plain_number() {
+        let shown = [14.697, 0.84843, 1.5731e-5, 2345.6, 23456.0].map(times);
+        assert_eq!(shown, ["14.70", "0.8484", "1.573e-5", "2346", "2.346e4"]);
     }
 
     #[test]
