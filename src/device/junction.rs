@@ -41,10 +41,6 @@ impl<L: Lane> ExponentialAnchor<L> {
 /// product `exp(v0)·expm1(v − v0)` could meet zero times infinity.
 const DEEP: f64 = -30.0;
 
-/// Below this exponent an exponential (1e-17 of its scale current) is rounding beside the current that flows the other
-/// way, −1 times the scale.
-const NOTHING: f64 = -39.0;
-
 impl Exponential<f64> {
     /// The same law in every lane.
     pub fn splat<L: Lane>(&self) -> Exponential<L> {
@@ -71,11 +67,7 @@ impl<L: Lane> Exponential<L> {
     pub fn deviation(&self, anchor: &ExponentialAnchor<L>, delta: L) -> (L, L) {
         let step = delta * self.inverse_width;
         let difference = if anchor.deep {
-            let exponent = anchor.exponent + step;
-            if exponent.largest() < NOTHING {
-                return (L::zero(), L::zero());
-            }
-            self.scale * exponent.exp() - anchor.value
+            self.scale * (anchor.exponent + step).exp() - anchor.value
         } else {
             anchor.value * step.exp_m1()
         };

@@ -100,7 +100,7 @@ fn the_mean_current_of_every_capacitor_is_zero() {
             // capacitor of many periods' time constant turns into as much of a mean current times that ratio
             let error = (found - volts[port]).abs() / largest;
             assert!(
-                error < 1e-7,
+                error < 1e-9,
                 "{name}: mean of port {port} is {}, its resistors say {found}",
                 volts[port]
             );
@@ -121,7 +121,7 @@ fn the_mean_current_of_every_capacitor_is_zero() {
             p.solution.rms()
         );
         assert!(
-            (mean - wanted).abs() < 1e-7 * p.solution.rms(),
+            (mean - wanted).abs() < 1e-9 * p.solution.rms(),
             "{name}: output {mean} against {wanted}"
         );
     }
@@ -230,7 +230,7 @@ fn the_unreduced_nodal_equations_give_back_the_solution() {
         // Newton leaves 1e-15 of the linear swing at a port, the shortest elements amplify rounding of the capacitor
         // conductances by some decades
         assert!(
-            worst < 1e-8 * largest,
+            worst < 1e-10 * largest,
             "{name}: off by {worst:e} V of {largest}"
         );
     }
@@ -321,7 +321,7 @@ fn the_power_delivered_is_the_power_dissipated() {
         // v·dq/dt of a capacitor has one degree more than the quadrature is exact for: the sixth power of the step,
         // which the mesh keeps below the solver's 3e-8 of H1
         assert!(
-            (delivered / dissipated - 1.0).abs() < 1e-7,
+            (delivered / dissipated - 1.0).abs() < 1e-10,
             "{name}: {delivered} W against {dissipated} W"
         );
     }

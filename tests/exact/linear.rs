@@ -43,7 +43,6 @@ fn magnitude_and_phase_of_a_linear_network_are_its_formula() {
 }
 
 #[test]
-#[ignore = "defect: the uneven mesh of a linear network leaves up to 3.2e-11 of H1 (−210 dB), above the stated floor of 3e-13"]
 fn the_distortion_of_a_linear_network_is_the_arithmetic_floor() {
     let mut faults = Vec::new();
     for (what, stage, frequency, _) in cases() {

@@ -50,7 +50,7 @@ impl Default for PeriodicOptions {
         PeriodicOptions {
             tolerance: 3e-8,
             coarsest: 6,
-            first_local_error: 3e-4,
+            first_local_error: 5e-4,
         }
     }
 }

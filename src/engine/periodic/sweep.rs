@@ -28,6 +28,14 @@ pub(super) enum Mesh<'m> {
     Adaptive { local_error: f64 },
 }
 
+/// Values of an accepted element at its start and its stages.
+struct Values {
+    element: Element,
+    /// Port voltages, port-minor.
+    ports: Vec<f64>,
+    outputs: Vec<f64>,
+}
+
 /// The state of one sweep.
 pub(super) struct Sweep<'s, 'a> {
     solver: &'s mut PeriodicSolver<'a>,
@@ -35,11 +43,8 @@ pub(super) struct Sweep<'s, 'a> {
     pub(super) state: State<f64>,
     pub(super) end: State<f64>,
     pass: Pass,
-    /// Port voltages and output at the start of the current element; none at phase zero.
-    v_start: Option<Vec<f64>>,
-    y_start: f64,
-    /// The last accepted element's values: (start, stages) for each port and for the output.
-    previous: Option<(Element, Vec<f64>, Vec<f64>)>,
+    /// The element before, by which the next one is guessed and judged; none at phase zero of a first sweep.
+    previous: Option<Values>,
     pub(super) v: Vec<f64>,
     predicted: Vec<f64>,
     pub(super) y: Vec<f64>,
@@ -47,6 +52,8 @@ pub(super) struct Sweep<'s, 'a> {
     forcing: Vec<f64>,
     v_scale: f64,
     y_scale: f64,
+    /// Where Newton's method last failed.
+    failed_port: usize,
 }
 
 impl<'s, 'a> Sweep<'s, 'a> {
@@ -82,9 +89,8 @@ impl<'s, 'a> Sweep<'s, 'a> {
             },
             state: start.clone(),
             end: start.clone(),
-            v_start: None,
-            y_start: 0.0,
             previous: None,
+            failed_port: 0,
             v: vec![0.0; stages * ports],
             predicted: vec![0.0; stages * ports],
             y: vec![0.0; stages],
@@ -123,10 +129,17 @@ impl<'s, 'a> Sweep<'s, 'a> {
 
     fn run_adaptively(&mut self, local_error: f64) -> Result<(), EngineError> {
         let coarsest = self.solver.options.coarsest;
-        let growth = 0.6 * 0.5f64.powi(self.solver.radau.stages() as i32 + 1);
+        let growth = 0.95 * 0.5f64.powi(self.solver.radau.stages() as i32 + 1);
+        // with nothing before it, the first element has no estimate of its error: a first sweep, which may start far
+        // from the period, begins with short ones, and a later one leaves it to the refinement
+        let caution = if self.solver.output_peak.is_none() {
+            2
+        } else {
+            0
+        };
         let mut element = Element {
             start: 0,
-            level: coarsest + 2,
+            level: coarsest + caution,
         };
         while element.start < 1 << FINEST {
             let error = if self.attempt(element)? {
@@ -166,7 +179,10 @@ impl<'s, 'a> Sweep<'s, 'a> {
     pub(super) fn no_step(&self, element: Element) -> EngineError {
         EngineError::NoStep {
             time: element.phase(0.0) / self.solver.frequency,
-            part: self.solver.network.port_name(0).to_string(),
+            part: match self.solver.bank.ports() {
+                0 => String::new(),
+                _ => self.solver.network.port_name(self.failed_port).to_string(),
+            },
         }
     }
 
@@ -194,7 +210,8 @@ impl<'s, 'a> Sweep<'s, 'a> {
             &mut self.v,
             acceptance,
         );
-        if solved.is_err() {
+        if let Err(failure) = solved {
+            self.failed_port = failure.port;
             return Ok(false);
         }
         self.solver
@@ -207,7 +224,12 @@ impl<'s, 'a> Sweep<'s, 'a> {
     fn predict(&mut self, element: Element) {
         let ports = self.solver.bank.ports();
         let stages = self.solver.radau.stages();
-        let Some((last, values, outputs)) = &self.previous else {
+        let Some(Values {
+            element: last,
+            ports: values,
+            outputs,
+        }) = &self.previous
+        else {
             self.v.fill(0.0);
             return;
         };
@@ -295,10 +317,10 @@ impl<'s, 'a> Sweep<'s, 'a> {
         self.pass.states.push(self.state.clone());
         let mut values = Vec::with_capacity((stages + 1) * ports);
         let mut outputs = Vec::with_capacity(stages + 1);
-        match self.v_start.take() {
-            Some(v_start) => {
-                values.extend(v_start);
-                outputs.push(self.y_start);
+        match &self.previous {
+            Some(before) => {
+                values.extend(&before.ports[stages * ports..]);
+                outputs.push(before.outputs[stages]);
             }
             None => {
                 // nothing is known at phase zero: continue the stages' own polynomial back to it
@@ -316,8 +338,6 @@ impl<'s, 'a> Sweep<'s, 'a> {
         }
         values.extend(&self.v);
         outputs.extend(&self.y);
-        self.v_start = Some(self.v[(stages - 1) * ports..].to_vec());
-        self.y_start = self.y[stages - 1];
         self.y_scale = self
             .y
             .iter()
@@ -325,7 +345,11 @@ impl<'s, 'a> Sweep<'s, 'a> {
         self.pass.mesh.push(element);
         self.pass.ports.extend(&self.v);
         self.pass.outputs.extend(&self.y);
-        self.previous = Some((element, values, outputs));
+        self.previous = Some(Values {
+            element,
+            ports: values,
+            outputs,
+        });
     }
 }
 
