@@ -4,6 +4,11 @@
 //! What it leaves over is read again (iterative refinement of the weighted least-squares fit), the fundamental first,
 //! so that the error of a small harmonic is relative to the distortion and not to the fundamental.
 
+/// Most readings of all harmonics together.
+const MOST_READINGS: usize = 8;
+/// A move this small beside the fundamental is rounding.
+const SETTLED: f64 = 1e-16;
+
 /// Sample points over one period with quadrature weights that sum to one.
 #[derive(Clone, Debug, Default)]
 pub struct UnevenPeriod {
@@ -75,8 +80,16 @@ impl UnevenPeriod {
             residual: values.to_vec(),
             residual_power: 0.0,
         };
-        for orders in [1, 1, count, count] {
-            self.refine(&mut spectrum, orders.min(count));
+        for _ in 0..2 {
+            self.refine(&mut spectrum, 1.min(count));
+        }
+        // each reading leaves over what the points' unevenness mixes between harmonics, a hundredth or less
+        for _ in 0..MOST_READINGS {
+            let moved = self.refine(&mut spectrum, count);
+            let reference = spectrum.harmonics.first().map_or(0.0, Coefficient::peak);
+            if moved <= SETTLED * reference {
+                break;
+            }
         }
         spectrum.residual_power = self
             .weights
@@ -87,8 +100,10 @@ impl UnevenPeriod {
         spectrum
     }
 
-    /// Read mean and harmonics 1…`orders` of the residual and move them from it into the coefficients.
-    fn refine(&self, spectrum: &mut Spectrum, orders: usize) {
+    /// Read mean and harmonics 1…`orders` of the residual and move them from it into the coefficients; returns the
+    /// largest move of a harmonic above the first.
+    fn refine(&self, spectrum: &mut Spectrum, orders: usize) -> f64 {
+        let mut moved = 0.0f64;
         let residual = &mut spectrum.residual;
         let weighted: Vec<f64> = self
             .weights
@@ -102,18 +117,22 @@ impl UnevenPeriod {
             *value -= mean;
         }
         let mut turning = (self.cosine.clone(), self.sine.clone());
-        for coefficient in spectrum.harmonics.iter_mut().take(orders) {
+        for (k, coefficient) in spectrum.harmonics.iter_mut().take(orders).enumerate() {
             let (cosine, sine) = (
                 2.0 * dot(&weighted, &turning.0),
                 2.0 * dot(&weighted, &turning.1),
             );
             coefficient.cosine += cosine;
             coefficient.sine += sine;
+            if k > 0 {
+                moved = moved.max(cosine.abs()).max(sine.abs());
+            }
             for ((value, c), s) in residual.iter_mut().zip(&turning.0).zip(&turning.1) {
                 *value -= cosine * c + sine * s;
             }
             self.turn(&mut turning);
         }
+        moved
     }
 
     /// From nθ to (n + 1)θ at every point.
