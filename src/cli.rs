@@ -113,7 +113,7 @@ pub struct DistortionArguments {
         allow_hyphen_values = true
     )]
     pub frequency: List<Frequency>,
-    /// Count the harmonics up to HZ into the THD, such as 22kHz, 30kHz or 80kHz; none counts all that were solved for.
+    /// Count the harmonics up to HZ into the THD, such as 22kHz, 30kHz or 80kHz; none counts all there are.
     #[arg(long, value_name = "HZ", default_value_t = Bandwidth(Some(DEFAULT_BANDWIDTH)), allow_hyphen_values = true)]
     pub bandwidth: Bandwidth,
     /// The report.

@@ -229,7 +229,9 @@ fn point_values(point: &DistortionPoint) -> Vec<String> {
             .filter(|_| point.thd.is_none())
             .unwrap_or_default(),
         number(point.bandwidth),
-        point.harmonics_in_thd.to_string(),
+        point
+            .bandwidth
+            .map_or_else(String::new, |_| point.harmonics_in_thd.to_string()),
         number(Some(point.dc_shift)),
         number(Some(point.error_estimate)),
     ];

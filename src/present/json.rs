@@ -137,7 +137,7 @@ fn point(point: &DistortionPoint) -> Value {
         "thd_db": optional(point.thd.and_then(decibels)),
         "thd_of_total_percent": optional(point.thd_of_total.map(|thd| 100.0 * thd)),
         "bandwidth_hz": optional(point.bandwidth),
-        "harmonics_in_thd": point.harmonics_in_thd,
+        "harmonics_in_thd": point.bandwidth.map(|_| point.harmonics_in_thd),
         "dc_shift_v": number(point.dc_shift),
         "harmonics": point.harmonics.iter().map(harmonic).collect::<Vec<_>>(),
         "error_estimate": number(point.error_estimate),

@@ -158,6 +158,19 @@ fn the_bandwidth_decides_how_many_harmonics_count() {
 }
 
 #[test]
+fn without_a_bandwidth_every_harmonic_counts_and_no_number_is_made_up() {
+    let bench = Bench::with_stage("b_split_emitter");
+    let words = "distortion stage.toml --level 20mV --bandwidth none";
+    let point = &points(&bench.run(&format!("{words} --json")).ends_with(0))[0];
+    assert!(point["bandwidth_hz"].is_null() && point["harmonics_in_thd"].is_null());
+    let table = bench.run(words).ends_with(0).stdout;
+    assert!(
+        table.contains("all harmonics, no bandwidth limit"),
+        "{table}"
+    );
+}
+
+#[test]
 fn the_table_states_the_conditions_and_what_was_assumed() {
     let bench = Bench::with_stage("exact_exponential");
     let table = bench

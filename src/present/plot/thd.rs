@@ -166,12 +166,18 @@ fn remarks(report: &DistortionReport, shown: usize, all: usize, what: &str) -> V
             .points
             .iter()
             .all(|point| point.harmonics_in_thd == first.harmonics_in_thd);
-        let harmonics = if same {
+        let harmonics = if first.bandwidth.is_none() {
+            "all harmonics".to_string()
+        } else if same {
             format!("harmonics 2..{}", first.harmonics_in_thd)
         } else {
             "harmonics".to_string()
         };
-        let joint = if same { ", " } else { " up to " };
+        let joint = if same || first.bandwidth.is_none() {
+            ", "
+        } else {
+            " up to "
+        };
         remarks.push(format!(
             "THD relative to H1, {harmonics}{joint}{}",
             bandwidth(first)

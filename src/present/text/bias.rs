@@ -26,7 +26,7 @@ pub fn bias(report: &BiasReport) -> String {
 fn nodes(report: &BiasReport) -> String {
     let mut table = Table::new(&[("node", Side::Left), ("voltage", Side::Right)]);
     for (name, volts) in &report.nodes {
-        table.row(vec![plain(name), measured(*volts, "V")]);
+        table.row(vec![plain(name), settled(*volts, "V")]);
     }
     table.lines()
 }
@@ -78,11 +78,16 @@ fn diodes(report: &BiasReport) -> String {
     for diode in &report.diodes {
         table.row(vec![
             plain(&diode.name),
-            measured(diode.current, "A"),
-            measured(diode.voltage, "V"),
+            settled(diode.current, "A"),
+            settled(diode.voltage, "V"),
         ]);
     }
     table.lines()
+}
+
+/// A value that may be nothing but rounding of zero, as that of a diode without bias.
+fn settled(value: f64, unit: &str) -> String {
+    measured(if value.abs() < 1e-18 { 0.0 } else { value }, unit)
 }
 
 fn supply(report: &BiasReport) -> String {

@@ -35,6 +35,12 @@ pub(in super::super) fn definition(point: &DistortionPoint) -> String {
     if point.thd.is_none() && point.harmonics_in_thd < 2 {
         return format!("{frequency}: no harmonic within {}", bandwidth(point));
     }
+    if point.bandwidth.is_none() {
+        return format!(
+            "{frequency}: THD relative to H1, all harmonics, {}",
+            bandwidth(point)
+        );
+    }
     format!(
         "{frequency}: THD relative to H1, harmonics 2..{}, {}",
         point.harmonics_in_thd,
