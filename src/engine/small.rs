@@ -3,6 +3,9 @@
 //! The same equations, predictor, clamp and acceptance as [`super::step`] with one stage; only the storage differs.
 //! The general path stays the reference: a test holds this one to it.
 
+// loops over a constant number of ports are unrolled by index; iterators over several arrays at once would hide that
+#![allow(clippy::needless_range_loop)]
+
 use super::bank::{Evaluation, PortBank};
 use super::scheme::BDF3;
 use super::step::clamp_prediction;

@@ -4,6 +4,9 @@
 //! resistances; C a direct-coupled pair of B devices. `bare exponentials` is the yardstick: a chain in which each
 //! exponential waits for the one before, as the steps of a transient do; a clean step of A needs two, of B four.
 
+// a bench that cannot set up has nothing to say
+#![allow(clippy::expect_used)]
+
 use cleanswing::audio::oversample::Oversampling;
 use cleanswing::engine::periodic::PeriodicOptions;
 use cleanswing::engine::step::State;
