@@ -1,10 +1,10 @@
 //! The operating point: capacitors open, inductors short, EMF zero.
 //!
 //! Newton's method on the port voltages of the reduced network, `v = p − K·(i(v) − g·v)`, with upward steps of a
-//! conducting junction taken logarithmically (L. W. Nagel, *Computer Program to Simulate Semiconductor Circuits*,
-//! Memorandum ERL-M520, University of California, 1975, junction limiting). Several starts; where plain Newton fails,
-//! the drives are raised from zero, then a shunt across every port is taken away step by step, then a pseudo-transient
-//! damps every port. A bias must also be stable: all poles of the linearised network in the left half plane.
+//! conducting junction taken logarithmically, in current rather than in voltage (common practice). Several starts;
+//! where plain Newton fails, the drives are raised from zero, then a shunt across every port is taken away step by
+//! step, then a pseudo-transient damps every port. A bias must also be stable: all poles of the linearised network in
+//! the left half plane.
 
 use super::bank::{Evaluation, JunctionLimits, PortBank, limits_of};
 use super::error::EngineError;

@@ -97,7 +97,7 @@ pub struct RailBias {
     pub power: f64,
 }
 
-/// How far the output can swing with every capacitor held at its bias voltage and every inductor at its bias current.
+/// How far the output can swing on the mid-band load line: what is a short or open at mid-band held at its bias.
 #[derive(Clone, Debug, PartialEq)]
 pub struct StaticSwing {
     /// Upward from the bias, V; `None` where nothing limits it.

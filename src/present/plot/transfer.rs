@@ -24,7 +24,7 @@ struct Level {
     lines: Vec<String>,
 }
 
-/// Output against EMF with every capacitor held at its bias voltage; bias and both ends of the swing are marked.
+/// Output against EMF at mid-band, coupling and bypass capacitors held at their bias voltage; bias and both ends of the swing are marked.
 pub fn transfer_curve(report: &BiasReport) -> Result<Picture, PlotError> {
     let points: Vec<_> = report
         .transfer
@@ -41,7 +41,7 @@ pub fn transfer_curve(report: &BiasReport) -> Result<Picture, PlotError> {
     }
     let levels = levels(report);
     let remark =
-        "static: every capacitor held at its bias voltage, every inductor at its bias current"
+        "static, mid-band: coupling and bypass capacitors held at their bias voltage"
             .to_string();
     let subject = "Static transfer from the source EMF to the output";
     let mut frame = Frame::new(SHEET, &report.title, subject, &[remark], &report.conditions);
