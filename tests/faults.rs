@@ -706,3 +706,13 @@ fn ten_thousand_faulty_parts_are_read_in_moments_and_told_in_fifty_lines() {
     assert_eq!(found.len(), 51);
     assert!(found[50].contains("more"), "{}", found[50]);
 }
+
+#[test]
+fn another_name_for_ground_is_refused() {
+    for name in ["GND", "0", "ground"] {
+        let text = SOUND.replacen("\"gnd\"", &format!("\"{name}\""), 1);
+        assert_ne!(text, SOUND);
+        let error = read(&text).expect_err("a floating ground").to_string();
+        assert!(error.contains("ground is called gnd"), "{error}");
+    }
+}

@@ -51,6 +51,16 @@ pub enum CommandError {
         /// What the file is for.
         what: &'static str,
     },
+    /// The output would replace a file the command reads.
+    OutputIsInput {
+        /// The file as given.
+        path: PathBuf,
+    },
+    /// A sound file that is not named as one.
+    NotNamedWav {
+        /// The file as given.
+        path: PathBuf,
+    },
     /// Stopped by the user.
     Interrupted,
 }
@@ -69,6 +79,8 @@ impl CommandError {
             CommandError::Exists { .. }
             | CommandError::Unwritable { .. }
             | CommandError::Output(_)
+            | CommandError::OutputIsInput { .. }
+            | CommandError::NotNamedWav { .. }
             | CommandError::NeedsFile { .. } => FailureKind::BadRequest,
         }
     }
@@ -115,6 +127,16 @@ impl fmt::Display for CommandError {
             CommandError::NeedsFile { what } => {
                 write!(out, "-: {what} must be an ordinary file, not a pipe")
             }
+            CommandError::OutputIsInput { path } => write!(
+                out,
+                "{}: is what the command reads; name another output file",
+                path.display()
+            ),
+            CommandError::NotNamedWav { path } => write!(
+                out,
+                "{}: the output is a WAV file; let its name end in .wav",
+                path.display()
+            ),
             CommandError::Interrupted => write!(out, "interrupted; nothing half-written is left"),
         }
     }

@@ -41,6 +41,7 @@ pub fn run(arguments: &ListenArguments) -> Result<(), CommandError> {
             return Err(CommandError::NeedsFile { what });
         }
     }
+    check_output(arguments)?;
     let spec = WavReader::open(&arguments.input)?.spec();
     let guard = Guard::new();
     let writer = WavWriter::create(&arguments.output, options(arguments, &spec))?;
@@ -63,6 +64,25 @@ pub fn run(arguments: &ListenArguments) -> Result<(), CommandError> {
     let report = job.render(writer)?;
     drop(job);
     output::say(&text::listen(&report));
+    Ok(())
+}
+
+/// The output must be named as what it is and must not replace what is read, `--overwrite` or not.
+fn check_output(arguments: &ListenArguments) -> Result<(), CommandError> {
+    let path = &arguments.output;
+    let named = path
+        .extension()
+        .is_some_and(|extension| extension.eq_ignore_ascii_case("wav"));
+    if !named {
+        return Err(CommandError::NotNamedWav { path: path.clone() });
+    }
+    let same = |other: &Path| match (path.canonicalize(), other.canonicalize()) {
+        (Ok(a), Ok(b)) => a == b,
+        _ => false,
+    };
+    if same(&arguments.input) || same(&arguments.stage.stage) {
+        return Err(CommandError::OutputIsInput { path: path.clone() });
+    }
     Ok(())
 }
 

@@ -108,7 +108,7 @@ impl fmt::Display for EngineError {
             }
             EngineError::NoStep { time, part } => write!(
                 f,
-                "the step at {time:.9e} s could not be solved; the last correction was largest at {part}; try a lower level or more --oversample"
+                "the step at {time:.9e} s could not be solved; the last correction was largest at {part}; try a lower level or a shorter step"
             ),
             EngineError::NoPeriod {
                 level,

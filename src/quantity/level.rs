@@ -50,6 +50,8 @@ impl Level {
 }
 
 impl Element for Level {
+    const MIXES_UNITS: bool = false;
+
     fn parse(text: &str) -> Result<Self, ValueError> {
         let text = text.trim();
         let rms = if let Some(number) = text.strip_suffix("dBV") {

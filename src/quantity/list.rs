@@ -15,6 +15,9 @@ pub trait Element: Copy {
     fn value(self) -> f64;
     /// The element of a value in base units.
     fn from_value(value: f64) -> Self;
+    /// Whether a list may hold a bare whole number straight before a value with a unit. Where it may not, a decimal
+    /// comma is caught.
+    const MIXES_UNITS: bool = true;
 }
 
 /// A list of at least one element, in the order typed.
@@ -26,6 +29,12 @@ impl<T: Element> FromStr for List<T> {
 
     fn from_str(text: &str) -> Result<Self, ValueError> {
         let mut elements = Vec::new();
+        if !T::MIXES_UNITS && has_decimal_comma(text) {
+            return Err(ValueError::OutOfRange {
+                found: text.to_owned(),
+                must: "has what looks like a decimal comma; write 0.2V, or give every value of the list its unit",
+            });
+        }
         for item in text.split(',') {
             match item.split_once("..") {
                 Some((from, rest)) => elements.extend(range::<T>(item, from, rest)?),
@@ -40,6 +49,19 @@ impl<T: Element> FromStr for List<T> {
         }
         Ok(List(elements))
     }
+}
+
+/// A bare whole number straight before a value with a unit: `0,2V` is rarely meant as 0 V and 2 V.
+fn has_decimal_comma(text: &str) -> bool {
+    let items: Vec<&str> = text.split(',').map(str::trim).collect();
+    let bare = |item: &str| !item.is_empty() && item.bytes().all(|byte| byte.is_ascii_digit());
+    let united = |item: &str| {
+        item.starts_with(|first: char| first.is_ascii_digit())
+            && item.ends_with(|last: char| !last.is_ascii_digit())
+    };
+    items
+        .windows(2)
+        .any(|pair| bare(pair[0]) && united(pair[1]))
 }
 
 fn range<T: Element>(item: &str, from: &str, rest: &str) -> Result<Vec<T>, ValueError> {
@@ -80,6 +102,19 @@ fn log_spaced<T: Element>(first: T, last: T, points: usize) -> Vec<T> {
 mod tests {
     use super::super::{Frequency, Level, Percent};
     use super::*;
+
+    #[test]
+    fn a_decimal_comma_in_a_list_of_levels_is_caught() {
+        assert!("0,2V".parse::<List<crate::quantity::Level>>().is_err());
+        assert!("2,2mV".parse::<List<crate::quantity::Level>>().is_err());
+        assert!("0.001,0.01".parse::<List<crate::quantity::Level>>().is_ok());
+        assert!("1mV..1V/60".parse::<List<crate::quantity::Level>>().is_ok());
+        assert!(
+            "1mV,10mV..1V/3"
+                .parse::<List<crate::quantity::Level>>()
+                .is_ok()
+        );
+    }
 
     #[test]
     fn a_list_keeps_its_order_and_exact_values() {

@@ -10,6 +10,9 @@ use super::names;
 use crate::device::keys::{Key, Range};
 use crate::quantity::{Unit, ValueError, engineering, quoted};
 
+/// What else people write for ground.
+const GROUND_NAMES: [&str; 5] = ["gnd", "0", "ground", "earth", "0v"];
+
 /// What reading a file collects besides the stage.
 pub(super) struct Reader<'t> {
     pub(super) lines: Lines<'t>,
@@ -368,6 +371,16 @@ impl<'a, 't> Fields<'a, 't> {
         name: &str,
         at: usize,
     ) -> Option<String> {
+        // another name for ground would be one more floating node
+        if name != "gnd" && GROUND_NAMES.contains(&name.to_ascii_lowercase().as_str()) {
+            reader.connection_fault(at, || {
+                format!(
+                    "{}{key}: node {name:?} would not be ground; ground is called gnd",
+                    self.prefix()
+                )
+            });
+            return None;
+        }
         match names::check(name) {
             Ok(()) => Some(name.to_owned()),
             Err(error) => {

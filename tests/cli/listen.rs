@@ -373,3 +373,25 @@ fn ctrl_c_leaves_no_half_file_and_ends_with_130() {
     assert_eq!(child.wait().unwrap().code(), Some(130));
     assert_eq!(bench.names(), ["long.wav", "stage.toml"]);
 }
+
+#[test]
+fn what_the_command_reads_is_never_its_output() {
+    let bench = bench(1);
+    let input = bench.read("in.wav");
+    let stage = bench.read("stage.toml");
+    bench
+        .run(&format!(
+            "listen stage.toml in.wav -o in.wav {WORDS} --overwrite"
+        ))
+        .ends_with(2)
+        .says("in.wav")
+        .says("another output file");
+    bench
+        .run(&format!(
+            "listen stage.toml in.wav -o stage.toml {WORDS} --overwrite"
+        ))
+        .ends_with(2)
+        .says(".wav");
+    assert_eq!(bench.read("in.wav"), input);
+    assert_eq!(bench.read("stage.toml"), stage);
+}

@@ -41,8 +41,7 @@ pub fn transfer_curve(report: &BiasReport) -> Result<Picture, PlotError> {
     }
     let levels = levels(report);
     let remark =
-        "static, mid-band: coupling and bypass capacitors held at their bias voltage"
-            .to_string();
+        "static, mid-band: coupling and bypass capacitors held at their bias voltage".to_string();
     let subject = "Static transfer from the source EMF to the output";
     let mut frame = Frame::new(SHEET, &report.title, subject, &[remark], &report.conditions);
     let heights = report
