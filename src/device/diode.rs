@@ -58,11 +58,13 @@ impl DiodeLaw<f64> {
             forward: Exponential {
                 scale: p.saturation_current,
                 inverse_width: 1.0 / (p.ideality * vt),
+                offset: 0.0,
             },
             // in the variable −v, so that it is a rising exponential like the other
             breakdown: p.breakdown_voltage.map(|volts| Exponential {
-                scale: p.breakdown_current * (-volts / breakdown_width).exp(),
+                scale: p.breakdown_current,
                 inverse_width: 1.0 / breakdown_width,
+                offset: volts / breakdown_width,
             }),
             transit_time: p.transit_time,
             stores_charge: depletion.is_present() || p.transit_time > 0.0,

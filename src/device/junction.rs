@@ -10,13 +10,16 @@
 
 use crate::numeric::Lane;
 
-/// An exponential of slope 1/`width`: `scale·exp(v/width)`.
+/// An exponential of slope 1/`width`: `scale·exp(v/width − offset)`.
 #[derive(Clone, Copy, Debug)]
 pub struct Exponential<L> {
     /// Scale current, A.
     pub scale: L,
     /// 1/(n·VT), 1/V.
     pub inverse_width: L,
+    /// Exponent at which the current is the scale: 0 for a junction, the breakdown voltage over its width for a
+    /// breakdown, whose value at zero volts would underflow.
+    pub offset: L,
 }
 
 /// An exponential at its anchor.
@@ -47,6 +50,7 @@ impl Exponential<f64> {
         Exponential {
             scale: L::splat(self.scale),
             inverse_width: L::splat(self.inverse_width),
+            offset: L::splat(self.offset),
         }
     }
 }
@@ -54,7 +58,7 @@ impl Exponential<f64> {
 impl<L: Lane> Exponential<L> {
     /// The anchor at `v` volts.
     pub fn anchor(&self, v: L) -> ExponentialAnchor<L> {
-        let exponent = v * self.inverse_width;
+        let exponent = v * self.inverse_width - self.offset;
         ExponentialAnchor {
             exponent,
             value: self.scale * exponent.exp(),
@@ -310,6 +314,7 @@ mod tests {
         let law = Exponential {
             scale: 1e-14,
             inverse_width: 1.0 / 0.0257,
+            offset: 0.0,
         };
         let at = law.anchor(0.65);
         let (difference, slope) = law.deviation(&at, 1e-12);
@@ -321,11 +326,28 @@ mod tests {
         let law = Exponential {
             scale: 1e-14,
             inverse_width: 1.0 / 0.025,
+            offset: 0.0,
         };
         let at = law.anchor(-30.0);
         let (difference, _) = law.deviation(&at, 30.6);
         // exp(24)·1e-14; the exponent carries the rounding of 1200 and more
         assert!((difference / (1e-14 * 24f64.exp()) - 1.0).abs() < 1e-12);
         assert_eq!(law.deviation(&at, 0.0).0, 0.0);
+    }
+
+    #[test]
+    fn a_breakdown_far_above_the_exponent_range_is_no_current_before_it() {
+        // 110 V over 25.7 mV is an exponent of 4281, where the value at zero volts is less than any number
+        let law = Exponential {
+            scale: 1e-4,
+            inverse_width: 1.0 / 0.0257,
+            offset: 110.0 / 0.0257,
+        };
+        let at = law.anchor(0.0);
+        for v in [0.0, 18.3, 60.0, 100.0] {
+            let (difference, slope) = law.deviation(&at, v);
+            assert!(difference.is_finite() && difference.abs() < 1e-4 && slope.is_finite());
+        }
+        assert!((law.deviation(&at, 110.0).0 / 1e-4 - 1.0).abs() < 1e-12);
     }
 }

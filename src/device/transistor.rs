@@ -91,6 +91,7 @@ impl TransistorLaw<f64> {
         let exponential = |scale: f64, ideality: f64| Exponential {
             scale,
             inverse_width: 1.0 / (ideality * vt),
+            offset: 0.0,
         };
         let leakage =
             |scale: f64, ideality: f64| (scale > 0.0).then(|| exponential(scale, ideality));
@@ -111,8 +112,9 @@ impl TransistorLaw<f64> {
             collector_leakage: leakage(p.collector_leakage_current, p.collector_leakage_ideality),
             // in the variable −vbe, so that it is a rising exponential like the others
             breakdown: p.emitter_breakdown_voltage.map(|volts| Exponential {
-                scale: p.emitter_breakdown_current * (-volts / vt).exp(),
+                scale: p.emitter_breakdown_current,
                 inverse_width: 1.0 / vt,
+                offset: volts / vt,
             }),
             inverse_forward_gain: 1.0 / p.forward_gain,
             inverse_reverse_gain: 1.0 / p.reverse_gain,

@@ -22,6 +22,13 @@ const CONVERGED: f64 = 1e-11;
 /// Corrections after convergence, so that the result does not depend on where the test fell.
 const POLISH: usize = 2;
 
+/// Transistors of which every combination of conducting and blocking is tried as a start.
+const MOST_COMBINED: usize = 5;
+/// Solutions whose currents differ by less than this share of the largest are one.
+const SAME_CURRENT: f64 = 1e-6;
+/// And so are those that differ by a leakage, A.
+const LEAKAGE: f64 = 1e-10;
+
 /// An operating point.
 #[derive(Clone, Debug)]
 pub struct OperatingPoint {
@@ -104,6 +111,8 @@ fn two_states(network: &Network, stable: &[OperatingPoint]) -> EngineError {
 pub struct DcProblem {
     bank: PortBank<f64>,
     limits: Vec<JunctionLimits>,
+    /// Number of ports that belong to transistors; they come first.
+    paired: usize,
     names: Vec<String>,
     /// Port voltages with no port current, per unit of each drive, ports × drives.
     from_drive: DMatrix<f64>,
@@ -163,6 +172,7 @@ impl DcProblem {
         Ok(DcProblem {
             bank: PortBank::anchored(network, &vec![0.0; probes.len()]),
             limits: limits_of(network),
+            paired: 2 * network.transistors.len(),
             names: (0..probes.len())
                 .map(|port| network.port_name(port).to_string())
                 .collect(),
@@ -179,23 +189,11 @@ impl DcProblem {
 
     /// Distinct solutions reached from several starts; at least one.
     fn all_solutions(&self, drives: &[f64]) -> Result<Vec<Vec<f64>>, EngineError> {
-        let forward = |port: usize| 0.6f64.min(0.9 * self.limits[port].knee);
-        let alternate = |port: usize, on: bool| if on { forward(port) } else { -3.0 };
-        let emitter = |port: usize| port.is_multiple_of(2);
-        let starts: [Vec<f64>; 4] = [
-            (0..self.ports())
-                .map(|port| alternate(port, emitter(port)))
-                .collect(),
-            vec![0.0; self.ports()],
-            (0..self.ports()).map(forward).collect(),
-            (0..self.ports())
-                .map(|port| alternate(port, port.is_multiple_of(4)))
-                .collect(),
-        ];
+        let starts = self.starts();
         let mut found: Vec<Vec<f64>> = Vec::new();
         for start in starts {
             if let Some(solution) = self.newton(drives, &start, NO_AID, MOST_ITERATIONS)
-                && !found.iter().any(|known| same_state(known, &solution))
+                && !found.iter().any(|known| self.same_state(known, &solution))
             {
                 found.push(solution);
             }
@@ -204,6 +202,59 @@ impl DcProblem {
             found.push(self.with_aids(drives, &vec![0.0; self.ports()])?);
         }
         Ok(found)
+    }
+
+    /// Where Newton's method begins: every transistor active, everything at rest, everything conducting, and every way
+    /// of some transistors conducting fully while the others do not, in which a second stable state would show.
+    fn starts(&self) -> Vec<Vec<f64>> {
+        let forward = |port: usize| 0.6f64.min(0.9 * self.limits[port].knee);
+        let active = |port: usize| {
+            if port < self.paired && !port.is_multiple_of(2) {
+                -3.0
+            } else {
+                forward(port)
+            }
+        };
+        let transistors = self.paired / 2;
+        let patterns: Vec<u32> = match transistors {
+            0..=1 => Vec::new(),
+            2..=MOST_COMBINED => (1..(1 << transistors) - 1).collect(),
+            _ => (0..transistors.min(31)).map(|k| 1 << k).collect(),
+        };
+        let some = |pattern: u32, port: usize| {
+            let on = port >= self.paired || pattern >> (port / 2) & 1 == 1;
+            if on { forward(port) } else { -1.0 }
+        };
+        let ports = 0..self.ports();
+        let mut starts = vec![
+            ports.clone().map(active).collect(),
+            vec![0.0; self.ports()],
+            ports.clone().map(forward).collect(),
+        ];
+        starts.extend(
+            patterns
+                .into_iter()
+                .map(|pattern| ports.clone().map(|port| some(pattern, port)).collect()),
+        );
+        starts
+    }
+
+    /// Whether two solutions carry the same currents. Voltages do not decide: between two blocking junctions a node may
+    /// lie anywhere, within rounding of the currents.
+    fn same_state(&self, a: &[f64], b: &[f64]) -> bool {
+        let currents = |v: &[f64]| {
+            let mut evaluation = Evaluation::for_bank(&self.bank);
+            self.bank.evaluate(v, &mut evaluation);
+            evaluation.current
+        };
+        let (a, b) = (currents(a), currents(b));
+        let largest = a
+            .iter()
+            .chain(&b)
+            .fold(0.0f64, |largest, current| largest.max(current.abs()));
+        a.iter()
+            .zip(&b)
+            .all(|(a, b)| (a - b).abs() < SAME_CURRENT * largest + LEAKAGE)
     }
 
     /// The solution reached from `start`, with every fallback.
@@ -396,12 +447,6 @@ impl DcProblem {
             inductor_currents: unknowns.iter().skip(network.unknowns).copied().collect(),
         }
     }
-}
-
-fn same_state(a: &[f64], b: &[f64]) -> bool {
-    a.iter()
-        .zip(b)
-        .all(|(a, b)| (a - b).abs() < 1e-6 * (1.0 + a.abs()))
 }
 
 /// Where a junction may go from `now` when Newton asks for `wanted`.

@@ -1,8 +1,8 @@
 //! Static swing and transfer curve: the mid-band load line.
 //!
-//! Every capacitor that is a short at mid-band is held at its bias voltage and every inductor that is open there at its
-//! bias current, load connected; device charges are left out. Which is which is decided from the largest down: an
-//! element whose time constant with the resistance it sees lies beyond 1/(2π·1 kHz) is held. (Holding a picofarad
+//! Every inductor is held at its bias current (a winding in the source passes the signal) and every capacitor that is a
+//! short at mid-band at its bias voltage, load connected; device charges are left out. Which capacitors is decided from
+//! the largest down: one whose time constant with the resistance it sees lies beyond 1/(2π·1 kHz) is held. (Holding a picofarad
 //! load or compensation capacitor too would pin the output, which no one means by mid-band.)
 
 use super::report::{Region, StaticSwing, TransferPoint};
@@ -10,7 +10,7 @@ use crate::engine::bias::OperatingPoint;
 use crate::engine::linear::Linearised;
 use crate::engine::step::{Acceptance, State, StepSolver};
 use crate::engine::{EngineError, PortBank};
-use crate::network::elements::EMF;
+use crate::network::elements::{EMF, SOURCE};
 use crate::network::{Network, Place, Reduction, Scheme};
 use crate::numeric::Matrix;
 use std::f64::consts::TAU;
@@ -98,7 +98,7 @@ impl StaticSweep {
         let mut emf = 1e-3 * 0.025 / (1.0 + self.gain);
         let mut last = (0.0, rest);
         while emf < LARGEST_EMF {
-            let next = self.solve(sign * emf, &last.1.v)?;
+            let next = self.approach(&last, sign * emf)?;
             if self.left_active(&next.v).is_some() {
                 return self.narrow(last, sign * emf);
             }
@@ -113,7 +113,7 @@ impl StaticSweep {
         let mut end = None;
         for _ in 0..50 {
             let middle = 0.5 * (good.0 + bad);
-            let point = self.solve(middle, &good.1.v)?;
+            let point = self.approach(&good, middle)?;
             match self.left_active(&point.v) {
                 Some((part, region)) => {
                     bad = middle;
@@ -137,6 +137,26 @@ impl StaticSweep {
                 region,
             })
         })
+    }
+
+    /// The point at `emf` from a neighbouring one, in smaller strides where one is too wide for Newton's method.
+    fn approach(&self, from: &(f64, Point), emf: f64) -> Option<Point> {
+        for strides in [1, 4, 16, 64] {
+            let mut v = from.1.v.clone();
+            let mut reached = None;
+            for k in 1..=strides {
+                let at = from.0 + (emf - from.0) * f64::from(k) / f64::from(strides);
+                reached = self.solve(at, &v);
+                match &reached {
+                    Some(point) => v.clone_from(&point.v),
+                    None => break,
+                }
+            }
+            if reached.is_some() {
+                return reached;
+            }
+        }
+        None
     }
 
     fn rest(&self) -> Point {
@@ -226,14 +246,12 @@ impl StaticSweep {
 fn mid_band(network: &Network, point: &OperatingPoint) -> Network {
     let mut now = network.clone();
     let mut capacitors: Vec<_> = std::mem::take(&mut now.capacitors);
-    let mut inductors: Vec<_> = std::mem::take(&mut now.inductors);
+    let inductors: Vec<_> = std::mem::take(&mut now.inductors);
     capacitors.sort_by(|a, b| b.farads.total_cmp(&a.farads));
-    inductors.sort_by(|a, b| b.henries.total_cmp(&a.henries));
     let longest = 1.0 / (TAU * MID_BAND);
     for inductor in inductors {
-        // seen from its own ends, the inductor absent; its winding resistance adds to the circuit's
-        let ohms = inductor.ohms + resistance_between(&now, point, inductor.pins);
-        if inductor.henries / ohms < longest {
+        // a winding in the source carries the signal; any other holds its bias current and is left out
+        if inductor.name == SOURCE {
             join(&mut now, inductor.pins, inductor.ohms);
         }
     }

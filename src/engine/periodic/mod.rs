@@ -179,7 +179,10 @@ impl<'a> PeriodicSolver<'a> {
                 level = (done * factor).min(amplitude);
             }
         }
-        Err(last)
+        Err(match last {
+            EngineError::NoPeriod { reason, .. } => self.no_period(amplitude, &reason),
+            other => other,
+        })
     }
 
     /// The linear response at phase zero to a sine of `amplitude` V peak: the imaginary parts of the phasors.
