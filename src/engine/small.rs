@@ -13,8 +13,8 @@ use crate::network::Reduction;
 use crate::network::reduction::PORT_CONDUCTANCE;
 use crate::numeric::Lane;
 
-/// Most Newton iterations of one step.
-const MOST_ITERATIONS: usize = 50;
+/// Most Newton iterations of one step: a junction driven volts too far comes back by one width an iteration.
+const MOST_ITERATIONS: usize = 500;
 
 /// A step that could not be solved: its number within the block and the port whose correction was largest.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -12,8 +12,8 @@ use crate::network::Reduction;
 use crate::network::reduction::PORT_CONDUCTANCE;
 use crate::numeric::{Factored, Lane, Matrix};
 
-/// Most Newton iterations of one step.
-const MOST_ITERATIONS: usize = 50;
+/// Most Newton iterations of one step: a junction driven volts too far comes back by one width an iteration.
+const MOST_ITERATIONS: usize = 500;
 /// A conducting junction moves up by at most this many widths (n·VT) in one iteration.
 const CLAMP: f64 = 2.0;
 
