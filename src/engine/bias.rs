@@ -22,6 +22,9 @@ const CONVERGED: f64 = 1e-11;
 /// Corrections after convergence, so that the result does not depend on where the test fell.
 const POLISH: usize = 2;
 
+/// A port voltage beyond this, V, is no solution: its rounding alone, through the port conductance, is a nanoampere, as
+/// where a forced current finds blocking junctions only.
+const FARTHEST: f64 = 1e12;
 /// Transistors of which every combination of conducting and blocking is tried as a start.
 const MOST_COMBINED: usize = 5;
 /// Solutions whose currents differ by less than this share of the largest are one.
@@ -402,7 +405,7 @@ impl DcProblem {
             let mut largest = 0.0f64;
             for port in 0..self.ports() {
                 let wanted = v[port] - step[port];
-                if !wanted.is_finite() {
+                if !wanted.is_finite() || wanted.abs() > FARTHEST {
                     return None;
                 }
                 let next = limited(v[port], wanted, &self.limits[port]);
