@@ -21,6 +21,9 @@ const LEFTOVER: f64 = 2.5e-10;
 /// A resonance with a quality above this leaves the region where backward differences of third order are stable.
 const HIGHEST_QUALITY: f64 = 7.0;
 
+/// Steps a turn beyond which any resonance is followed well enough.
+const MANY_STEPS: f64 = 5000.0;
+
 /// Third-order backward differences at a constant step, from the bias, in every lane.
 pub struct UniformTransient<L> {
     /// The same step with sizes known to the compiler, where there is one; then the rest below stays untouched.
@@ -320,8 +323,8 @@ pub fn step_rule(network: &Network, point: &OperatingPoint, step: f64) -> StepRu
         .into_iter()
         .any(|pole| {
             let quality = pole.norm() / (2.0 * pole.re.abs());
-            // slower than a fiftieth of the step rate the formula's damping error is of no account
-            quality > HIGHEST_QUALITY && pole.norm() * step > TAU / 50.0 * 1e-2
+            // with thousands of steps a turn the formula's damping error is of no account
+            quality > HIGHEST_QUALITY && pole.norm() * step > TAU / MANY_STEPS
         });
     if rings {
         StepRule::Radau

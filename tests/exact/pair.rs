@@ -32,7 +32,7 @@ fn harmonics_of_the_pair_are_those_of_the_hyperbolic_tangent() {
             };
             let error = (found - wanted).abs();
             assert!(
-                error < 1e-7 + TAIL,
+                error < TAIL,
                 "x = {x}, H{}: {found}, expected {wanted}",
                 harmonic.n
             );
